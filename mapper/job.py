@@ -1,0 +1,409 @@
+"""The job file: one TOML that names the layers, the law, the regions and what to write."""
+
+from __future__ import annotations
+
+import difflib
+import os
+import re
+import tomllib
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+from mapper.errors import JobError, MissingFileError, Problems
+from mapper.laws import Spread
+from mapper.rocks import ROCK_NAMES
+
+LAYER_NAMES = (
+    "lithology",
+    "temperature",
+    "runoff",
+    "precipitation",
+    "vegetation",
+    "erosion",
+    "soil_shielding",
+    "evapotranspiration",
+    "soil_co2",
+    "reference_consumption",
+)
+
+VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
+RUNOFF_METHODS = ("turc-1954",)
+RESAMPLING = ("auto", "nearest", "bilinear", "mean")
+RESPONSES = ("runoff", "temperature", "vegetation", "soil")
+
+
+@dataclass(frozen=True, kw_only=True)
+class LayerSpec:
+    """One ``[layers.NAME]`` table, paths made absolute."""
+
+    name: str
+    path: str
+    variable: str | None = None
+    units: str | None = None
+    crs: str | None = None
+    legend: str | None = None
+    column: str | None = None
+    sheet: str | None = None
+    unknown: str = "error"
+    kind: str = "cover"
+    bare: float = 0.05
+    dense: float = 0.86
+    scale: float | None = None
+    offset: float | None = None
+    nodata: tuple[float, ...] = ()
+    resampling: str = "auto"
+
+    @property
+    def where(self) -> str:
+        """How an error names this layer."""
+        return f"layers.{self.name}, {self.path}"
+
+
+@dataclass(frozen=True, kw_only=True)
+class GridSpec:
+    """The ``[grid]`` table: a layer to take the grid from, or a CRS, resolution and bounds."""
+
+    take_from: str | None = None
+    crs: str | None = None
+    resolution: tuple[float, float] | None = None
+    bounds: tuple[float, float, float, float] | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class ParameterSpec:
+    """A parameter that the job sets: a value for all rocks, or one for each, and a spread."""
+
+    value: float | None = None
+    by_rock: Mapping[str, float] = field(default_factory=dict)
+    spread: Spread | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class LawSpec:
+    """The ``[law]`` table."""
+
+    default: str = "product"
+    by_rock: Mapping[str, str] = field(default_factory=dict)
+    base: str = "amiotte-suchet-1995"
+    responses: Mapping[str, str] = field(default_factory=dict)
+    parameters: Mapping[str, ParameterSpec] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, kw_only=True)
+class RegionsSpec:
+    """The ``[regions]`` table."""
+
+    path: str
+    id: str
+    layer: str | None = None
+    crs: str | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
+class Job:
+    """A job file as read: nothing opened yet, every path absolute."""
+
+    path: str
+    title: str
+    grid: GridSpec
+    layers: Mapping[str, LayerSpec]
+    water_method: str
+    law: LawSpec
+    regions: RegionsSpec | None
+    folder: str
+
+
+def load_job(path: str | Path) -> Job:
+    """Read a job file.
+
+    Parameters
+    ----------
+    path : the TOML file; relative paths in it are relative to its folder, and ``${NAME}`` in a
+        path stands for an environment variable.
+
+    Raises
+    ------
+    MissingFileError, JobError, or ManyProblemsError with every problem that the file itself has.
+    """
+    path = Path(path).absolute()
+    table = _read_toml(path)
+    problems = Problems()
+    root = _Table(table, where=str(path), problems=problems)
+    folder = path.parent
+    job = Job(
+        path=str(path),
+        title=root.text("title", default=path.stem),
+        grid=_grid_spec(root.table("grid")),
+        layers=_layer_specs(root.table("layers"), folder),
+        water_method=root.table("water").choice("method", RUNOFF_METHODS, default="turc-1954"),
+        law=_law_spec(root.table("law")),
+        regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
+        folder=_output_folder(root.table("output"), folder, path.stem),
+    )
+    root.finish()
+    problems.raise_if_any()
+    return job
+
+
+def _read_toml(path: Path) -> dict[str, Any]:
+    if not path.is_file():
+        near = difflib.get_close_matches(path.name, _toml_names(path.parent), n=1)
+        raise MissingFileError(
+            f"there is no job file {path.name!r}",
+            where=str(path.parent),
+            fix=f"saprolite run {path.parent / near[0]}" if near else "the path of a .toml file",
+        )
+    try:
+        return tomllib.loads(path.read_bytes().decode("utf-8-sig").replace("\r\n", "\n"))
+    except tomllib.TOMLDecodeError as cause:
+        raise JobError(
+            f"the job file is not valid TOML: {cause}",
+            where=str(path),
+            fix="mend the line and column named; text goes in double quotes",
+        ) from cause
+    except UnicodeDecodeError as cause:
+        raise JobError(
+            f"the job file is not UTF-8 text (byte {cause.start})",
+            where=str(path),
+            fix="save it as UTF-8",
+        ) from cause
+
+
+def _toml_names(folder: Path) -> list[str]:
+    return [one.name for one in folder.glob("*.toml")] if folder.is_dir() else []
+
+
+class _Table:
+    """A TOML table that knows its place, checks each value, and notes keys nobody asked for."""
+
+    def __init__(self, table: Mapping[str, Any], *, where: str, problems: Problems) -> None:
+        self.values = table
+        self.where = where
+        self.problems = problems
+        self.known: list[str] = []
+        self.children: list[_Table] = []
+
+    def _take(self, key: str) -> Any:
+        self.known.append(key)
+        return self.values.get(key)
+
+    def wrong(self, key: str, needed: str, fix: str) -> None:
+        value = self.values.get(key)
+        problem = f"{key} = {value!r}, and {needed} is needed" if key in self.values else needed
+        self.problems.add(JobError(problem, where=f"{self.where}, {key}", fix=fix))
+
+    def table(self, key: str) -> _Table:
+        value = self._take(key)
+        if value is not None and not isinstance(value, dict):
+            self.wrong(key, "a table", f"[{key}] on a line of its own")
+            value = {}
+        separator = ", " if self.where.endswith(".toml") else "."
+        child = _Table(value or {}, where=f"{self.where}{separator}{key}", problems=self.problems)
+        self.children.append(child)
+        return child
+
+    def text(self, key: str, *, default: str) -> str:
+        value = self._take(key)
+        if value is None:
+            return default
+        if not isinstance(value, str) or not value.strip():
+            self.wrong(key, "text", f'{key} = "..."')
+            return default
+        return value
+
+    def optional_text(self, key: str) -> str | None:
+        value = self.text(key, default="")
+        return value or None
+
+    def needed_text(self, key: str, example: str) -> str:
+        if key not in self.values:
+            self.known.append(key)
+            self.wrong(key, f"{key} is missing", f"{key} = {example}")
+            return ""
+        return self.text(key, default="")
+
+    def choice(self, key: str, among: tuple[str, ...], *, default: str) -> str:
+        value = self.text(key, default=default)
+        if value not in among:
+            near = difflib.get_close_matches(value, among, n=1, cutoff=0.0)[0]
+            self.wrong(key, "one of " + ", ".join(among), f'{key} = "{near}"')
+            return default
+        return value
+
+    def number(self, key: str) -> float | None:
+        value = self._take(key)
+        if value is None:
+            return None
+        if isinstance(value, bool) or not isinstance(value, int | float):
+            self.wrong(key, "a number", f"{key} = 1.0, without quotes")
+            return None
+        if value != value or value in (float("inf"), float("-inf")):
+            self.wrong(key, "a finite number", f"{key} = 1.0")
+            return None
+        return float(value)
+
+    def numbers(self, key: str, count: int | None, example: str) -> tuple[float, ...] | None:
+        value = self._take(key)
+        if value is None:
+            return None
+        listed = value if isinstance(value, list) else [value]
+        good = all(isinstance(one, int | float) and not isinstance(one, bool) for one in listed)
+        if not good or (count is not None and len(listed) != count):
+            self.wrong(key, f"{count or 'some'} numbers", f"{key} = {example}")
+            return None
+        return tuple(float(one) for one in listed)
+
+    def finish(self) -> None:
+        """Note every key that was not asked for, with the nearest one that is known."""
+        for key in self.values:
+            if key in self.known:
+                continue
+            near = difflib.get_close_matches(key, self.known, n=1, cutoff=0.5)
+            fix = f"{near[0]}" if near else "one of: " + ", ".join(sorted(set(self.known)))
+            self.problems.add(
+                JobError(f"unknown key {key!r}", where=f"{self.where}, {key}", fix=fix)
+            )
+        for child in self.children:
+            child.finish()
+
+
+def _absolute(text: str, folder: Path, table: _Table) -> str:
+    def expand(match: re.Match[str]) -> str:
+        name = match[1]
+        if name not in os.environ:
+            table.problems.add(
+                JobError(
+                    f"path {text!r} names the variable {name}, which is not set",
+                    where=f"{table.where}, path",
+                    fix=f"export {name}=FOLDER before the run, or write the path out",
+                )
+            )
+        return os.environ.get(name, "")
+
+    return str((folder / re.sub(r"\$\{(\w+)\}", expand, text)).resolve()) if text else ""
+
+
+def _grid_spec(table: _Table) -> GridSpec:
+    take_from = table.optional_text("from")
+    crs = table.optional_text("crs")
+    resolution = table.numbers("resolution", None, "0.1")
+    bounds = table.numbers("bounds", 4, "[left, bottom, right, top]")
+    if resolution is not None and (len(resolution) > 2 or min(resolution) <= 0):
+        table.wrong("resolution", "one or two positive numbers", "resolution = 0.1")
+        resolution = None
+    if bounds is not None and not (bounds[0] < bounds[2] and bounds[1] < bounds[3]):
+        table.wrong("bounds", "left < right and bottom < top", "bounds = [-10, 40, 5, 50]")
+        bounds = None
+    return GridSpec(
+        take_from=take_from,
+        crs=crs,
+        resolution=None if resolution is None else (resolution[0], resolution[-1]),
+        bounds=None if bounds is None else (bounds[0], bounds[1], bounds[2], bounds[3]),
+    )
+
+
+def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
+    specs = {
+        name: _layer_spec(name, table.table(name), folder)
+        for name in LAYER_NAMES
+        if name in table.values
+    }
+    table.known.extend(LAYER_NAMES)
+    if "lithology" not in specs:
+        table.wrong(
+            "lithology",
+            "the job has no lithology layer",
+            '[layers.lithology] with path = "rocks.tif" and legend = "legend.csv"',
+        )
+    return specs
+
+
+def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
+    lithology = name == "lithology"
+    path = _absolute(table.needed_text("path", '"file.tif"'), folder, table)
+    common: dict[str, Any] = {
+        "name": name,
+        "path": path,
+        "variable": table.optional_text("variable"),
+        "sheet": table.optional_text("layer"),
+        "crs": table.optional_text("crs"),
+        "nodata": table.numbers("nodata", None, "-9999") or (),
+    }
+    if lithology:
+        legend = table.needed_text("legend", '"legend.csv"')
+        return LayerSpec(
+            **common,
+            legend=_absolute(legend, folder, table),
+            column=table.optional_text("column"),
+            unknown=table.choice("unknown", ("error", "nodata"), default="error"),
+        )
+    vegetation: dict[str, Any] = {}
+    if name == "vegetation":
+        vegetation["kind"] = table.choice("kind", VEGETATION_KINDS, default="cover")
+        for key, default in (("bare", 0.05), ("dense", 0.86)):
+            value = table.number(key)
+            vegetation[key] = default if value is None else value
+        if vegetation["bare"] >= vegetation["dense"]:
+            table.wrong("bare", "bare below dense", "bare = 0.05 and dense = 0.86")
+    return LayerSpec(
+        **common,
+        **vegetation,
+        units=table.optional_text("units"),
+        scale=table.number("scale"),
+        offset=table.number("offset"),
+        resampling=table.choice("resampling", RESAMPLING, default="auto"),
+    )
+
+
+def _law_spec(table: _Table) -> LawSpec:
+    responses = table.table("responses")
+    parameters = table.table("parameters")
+    by_rock = table.table("by_rock")
+    chosen = {key: responses.text(key, default="") for key in RESPONSES if key in responses.values}
+    responses.known.extend(RESPONSES)
+    return LawSpec(
+        default=table.text("default", default="product"),
+        base=table.text("base", default="amiotte-suchet-1995"),
+        by_rock={key: by_rock.text(key, default="") for key in list(by_rock.values)},
+        responses={key: value for key, value in chosen.items() if value},
+        parameters={key: _parameter_spec(key, parameters) for key in list(parameters.values)},
+    )
+
+
+def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
+    if not isinstance(parent.values[name], dict):
+        return ParameterSpec(value=parent.number(name))
+    table = parent.table(name)
+    value = table.number("value")
+    sd = table.number("sd")
+    if sd is not None and sd < 0:
+        table.wrong("sd", "a spread of zero or more", "sd = 8.0")
+        sd = None
+    rocks = table.table("by_rock")
+    for rock in rocks.values:
+        if rock not in ROCK_NAMES:
+            near = difflib.get_close_matches(rock, ROCK_NAMES, n=1, cutoff=0.0)[0]
+            rocks.wrong(rock, f"{rock!r} is not a rock", f'"{near}" = ...')
+    values = {key: rocks.number(key) for key in list(rocks.values)}
+    return ParameterSpec(
+        value=value,
+        by_rock={key: one for key, one in values.items() if one is not None},
+        spread=None if sd is None else Spread(kind="normal", sd=sd),
+    )
+
+
+def _regions_spec(table: _Table, folder: Path) -> RegionsSpec:
+    path = table.needed_text("path", '"regions.gpkg"')
+    return RegionsSpec(
+        path=_absolute(path, folder, table),
+        id=table.needed_text("id", '"name of the id column"'),
+        layer=table.optional_text("layer"),
+        crs=table.optional_text("crs"),
+    )
+
+
+def _output_folder(table: _Table, folder: Path, stem: str) -> str:
+    text = table.text("folder", default=f"out/{stem}")
+    return _absolute(text, folder, table)

@@ -1,0 +1,1 @@
+"""Layers: opening files, decoding raw values once, and bringing them onto the job's grid."""

@@ -1,0 +1,262 @@
+"""CF NetCDF through xarray: raw values, and coordinates checked before they are believed."""
+
+from __future__ import annotations
+
+import difflib
+from functools import lru_cache
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+from pyproj import CRS
+from pyproj.exceptions import CRSError
+
+from mapper.errors import FileFormatError, GridError, ValuesError
+from mapper.grid import parse_crs
+from mapper.job import LayerSpec
+from mapper.layers.axis import Axis, around_the_earth, axis_from_centres
+from mapper.layers.source import UNTAGGED_FILLS, Source, take
+
+_LON_LAT = "OGC:CRS84"
+
+
+@lru_cache(maxsize=32)
+def _opened(path: str) -> xr.Dataset:
+    with Path(path).open("rb") as stream:
+        engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
+    return xr.open_dataset(
+        path, engine=engine, decode_cf=False, cache=False  # raw values: decoded once, by us
+    )
+
+
+def open_netcdf(spec: LayerSpec) -> Source:
+    """Read the header of one variable of a CF NetCDF file.
+
+    Raises
+    ------
+    FileFormatError, GridError, ValuesError.
+    """
+    try:
+        dataset = _opened(spec.path)
+    except (OSError, ValueError) as cause:
+        raise FileFormatError(
+            f"the file cannot be opened as NetCDF: {cause}", where=spec.where, fix="copy it again"
+        ) from cause
+    variable = _variable(dataset, spec)
+    x_name, y_name = _horizontal(dataset, variable, spec)
+    _refuse_other_axes(variable, (x_name, y_name), spec)
+    crs = _crs(dataset, variable, x_name, spec)
+    geographic = bool(parse_crs(crs).is_geographic)
+    x = _axis(dataset, x_name, spec, southing=False, longitude=geographic)
+    y = _axis(dataset, y_name, spec, southing=True, longitude=False)
+    x = around_the_earth(x) if geographic else x
+    y = _inside_the_poles(y, spec) if geographic else y
+    attrs = variable.attrs
+    return Source(
+        kind="netcdf",
+        path=spec.path,
+        variable=str(variable.name),
+        crs=crs,
+        x=x,
+        y=y,
+        dtype=str(variable.dtype),
+        nodata=_nodata(variable, spec),
+        scale=float(attrs.get("scale_factor", 1.0)) if spec.scale is None else spec.scale,
+        offset=float(attrs.get("add_offset", 0.0)) if spec.offset is None else spec.offset,
+        unit=_text(attrs.get("units")),
+        has_mask=False,
+        block=_chunk(variable, (y_name, x_name), (y.size, x.size)),
+        label=_text(attrs.get("long_name") or attrs.get("standard_name")) or "",
+    )
+
+
+def _text(value: Any) -> str | None:
+    if isinstance(value, bytes):
+        return value.decode("latin-1")
+    return None if value is None else str(value)
+
+
+def _variable(dataset: xr.Dataset, spec: LayerSpec) -> xr.DataArray:
+    gridded = [str(name) for name in dataset.data_vars if dataset[name].ndim >= 2]
+    gridded = [name for name in gridded if not name.endswith(("_bnds", "_bounds"))]
+    if spec.variable is not None and spec.variable in dataset.data_vars:
+        return dataset[spec.variable]
+    if spec.variable is None and len(gridded) == 1:
+        return dataset[gridded[0]]
+    listed = ", ".join(gridded) or "none"
+    if spec.variable is None:
+        raise FileFormatError(
+            f"the file has {len(gridded)} gridded variables: {listed}",
+            where=spec.where,
+            fix=f'variable = "{gridded[0] if gridded else "..."}"',
+        )
+    near = difflib.get_close_matches(spec.variable, gridded, n=1, cutoff=0.0)
+    raise FileFormatError(
+        f"there is no variable {spec.variable!r}; there are: {listed}",
+        where=spec.where,
+        fix=f'variable = "{near[0] if near else "..."}"',
+    )
+
+
+_X_UNITS = ("degrees_east", "degree_east", "degree_e", "degrees_e", "degreee", "degreese")
+_Y_UNITS = ("degrees_north", "degree_north", "degree_n", "degrees_n", "degreen", "degreesn")
+
+
+def _horizontal(dataset: xr.Dataset, variable: xr.DataArray, spec: LayerSpec) -> tuple[str, str]:
+    x = [str(dim) for dim in variable.dims if _is_axis(dataset, str(dim), "x")]
+    y = [str(dim) for dim in variable.dims if _is_axis(dataset, str(dim), "y")]
+    if len(x) == 1 and len(y) == 1:
+        return x[0], y[0]
+    flat = [
+        name
+        for name in str(variable.attrs.get("coordinates", "")).split()
+        if name in dataset and dataset[name].ndim == 2
+    ]
+    if flat:
+        raise GridError(
+            f"variable {variable.name!r} lies on a curvilinear grid (2-D {', '.join(flat)})",
+            where=spec.where,
+            fix="regrid it to a longitude/latitude or projected grid",
+        )
+    raise GridError(
+        f"variable {variable.name!r} has dimensions {tuple(variable.dims)}; which are x and y "
+        "cannot be told",
+        where=spec.where,
+        fix='coordinates with units "degrees_east" and "degrees_north", or standard names',
+    )
+
+
+def _is_axis(dataset: xr.Dataset, dim: str, axis: str) -> bool:
+    if dim not in dataset.variables or dataset[dim].ndim != 1:
+        return False
+    attrs = dataset[dim].attrs
+    units = str(attrs.get("units", "")).strip().lower()
+    names = {
+        "x": ("longitude", "projection_x_coordinate", "grid_longitude"),
+        "y": ("latitude", "projection_y_coordinate", "grid_latitude"),
+    }
+    plain = {"x": ("x", "lon", "longitude"), "y": ("y", "lat", "latitude")}
+    if units in (_X_UNITS if axis == "x" else _Y_UNITS):
+        return True
+    if attrs.get("standard_name") in names[axis] or attrs.get("axis", "").lower() == axis:
+        return True
+    return dim.lower() in plain[axis]
+
+
+def _refuse_other_axes(variable: xr.DataArray, used: tuple[str, str], spec: LayerSpec) -> None:
+    others = {str(dim): size for dim, size in variable.sizes.items() if dim not in used}
+    for dim, size in others.items():
+        if size != 1:
+            raise ValuesError(
+                f"variable {variable.name!r} has {size} values along {dim!r}, and one is needed",
+                where=spec.where,
+                fix=f"the mean or one step along {dim!r}, in a file of its own",
+            )
+
+
+def _crs(dataset: xr.Dataset, variable: xr.DataArray, x_name: str, spec: LayerSpec) -> str:
+    if spec.crs is not None:
+        return parse_crs(spec.crs).to_wkt()
+    mapping = str(variable.attrs.get("grid_mapping", "")).split(":")[0].strip()
+    if mapping and mapping in dataset.variables:
+        attrs = dict(dataset[mapping].attrs)
+        if attrs.get("grid_mapping_name") == "rotated_latitude_longitude":
+            raise GridError(
+                f"variable {variable.name!r} lies on a rotated pole ({mapping})",
+                where=spec.where,
+                fix="regrid it to a longitude/latitude grid",
+            )
+        try:
+            return CRS.from_cf(attrs).to_wkt()
+        except (CRSError, KeyError) as cause:
+            raise GridError(
+                f"grid mapping {mapping!r} cannot be read: {cause}",
+                where=spec.where,
+                fix='crs = "EPSG:..." in the job file',
+            ) from cause
+    units = str(dataset[x_name].attrs.get("units", "")).strip().lower()
+    if units in _X_UNITS or dataset[x_name].attrs.get("standard_name") == "longitude":
+        return parse_crs(_LON_LAT).to_wkt()
+    raise GridError(
+        f"the file does not say the CRS of {variable.name!r}",
+        where=spec.where,
+        fix=f'crs = "EPSG:4326" (or its true code) under [layers.{spec.name}]',
+    )
+
+
+def _axis(
+    dataset: xr.Dataset, name: str, spec: LayerSpec, *, southing: bool, longitude: bool
+) -> Axis:
+    sign = -1.0 if southing else 1.0
+    coordinate = dataset[name]
+    centres = sign * np.asarray(coordinate, dtype=np.float64)
+    bounds_name = str(coordinate.attrs.get("bounds", ""))
+    bounds = None
+    if bounds_name in dataset.variables:
+        bounds = sign * np.asarray(dataset[bounds_name], dtype=np.float64)
+    if coordinate.dtype == np.float32:
+        centres = _regularised(centres)
+    where = f"{spec.where}, coordinate {name!r}"
+    return axis_from_centres(centres, bounds, longitude=longitude, where=where)
+
+
+def _regularised(centres: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Undo float32 rounding where the coordinates are evenly spaced within it."""
+    if centres.size < 3:
+        return centres
+    even = np.linspace(centres[0], centres[-1], centres.size)
+    tolerance = 4 * np.finfo(np.float32).eps * float(np.abs(centres).max())
+    return even if float(np.abs(even - centres).max()) <= tolerance else centres
+
+
+def _inside_the_poles(y: Axis, spec: LayerSpec) -> Axis:
+    over = float(np.abs(y.edges).max()) - 90.0
+    if over > 0.51 * y.step:
+        raise GridError(
+            f"cells reach {over:g} degrees beyond a pole", where=spec.where, fix="mend latitudes"
+        )
+    return Axis(y.centres, np.clip(y.edges, -90.0, 90.0), y.order, y.period)
+
+
+def _nodata(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, ...]:
+    values = list(spec.nodata)
+    for key in ("_FillValue", "missing_value"):
+        if key in variable.attrs:
+            values.extend(float(one) for one in np.atleast_1d(variable.attrs[key]))
+    if variable.dtype.kind == "f":
+        values.extend(UNTAGGED_FILLS)
+    return tuple(dict.fromkeys(values))
+
+
+def _chunk(variable: xr.DataArray, dims: tuple[str, str], shape: tuple[int, int]) -> tuple[int, int]:
+    chunks = variable.encoding.get("chunksizes")
+    if not chunks:
+        return shape
+    sizes = dict(zip(variable.dims, chunks, strict=True))
+    return int(sizes[dims[0]]), int(sizes[dims[1]])
+
+
+def read_window(
+    source: Source, rows: slice, cols: slice
+) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+    """Read raw values for one window in file order; NetCDF has no separate mask."""
+    variable = _opened(source.path)[source.variable]
+    x_name, y_name = _dims(_opened(source.path), variable)
+    flat = variable.isel({dim: 0 for dim in variable.dims if dim not in (x_name, y_name)})
+    try:
+        raw = take(flat.transpose(y_name, x_name), rows, cols)
+    except (OSError, RuntimeError) as cause:
+        raise FileFormatError(
+            f"rows {rows.start}..{rows.stop} of {source.variable!r} cannot be read: {cause}",
+            where=source.path,
+            fix="the file is cut short or damaged: copy or fetch it again",
+        ) from cause
+    return raw, np.ones(raw.shape, dtype=np.bool_)
+
+
+def _dims(dataset: xr.Dataset, variable: xr.DataArray) -> tuple[str, str]:
+    x = next(str(dim) for dim in variable.dims if _is_axis(dataset, str(dim), "x"))
+    y = next(str(dim) for dim in variable.dims if _is_axis(dataset, str(dim), "y"))
+    return x, y

@@ -1,0 +1,183 @@
+"""Bringing values onto the grid from another CRS: sampled at points of each target cell."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mapper.grid import Grid, Window, transformer
+from mapper.layers.axis import Axis, AxisPlan
+from mapper.layers.resample import LEAST_COVER
+from mapper.layers.source import Source
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+LATTICE = 8
+"""Cells between the points that PROJ transforms; bilinear between them. The lattice is anchored
+at the grid's origin, so that a point's coordinates do not depend on the window."""
+
+MOST_SUBDIVISIONS = 8
+
+
+@dataclass(frozen=True, eq=False)
+class PointPlan:
+    """Source cells around each sample point of a window.
+
+    ``points`` is the number of sample points along a cell's side. ``row`` and ``col`` have shape
+    (n_rows * points, n_cols * points) and count from the start of ``rows`` and ``cols``; -1 lies
+    outside the source.
+    """
+
+    points: int
+    rows: AxisPlan
+    cols: AxisPlan
+    row: Ints
+    col: Ints
+    x: Floats
+    y: Floats
+
+
+def plan_points(grid: Grid, window: Window, source: Source, points: int) -> PointPlan | None:
+    """Find the source cells that a window's sample points fall into; None where there are none."""
+    x, y = _source_coordinates(grid, window, source, points)
+    y = -y
+    if source.x.period:
+        x = source.x.edges[0] + np.mod(x - source.x.edges[0], source.x.period)
+    row, col = _index(source.y, y), _index(source.x, x)
+    inside = (row >= 0) & (col >= 0)
+    if not inside.any():
+        return None
+    row, col = np.where(inside, row, -1), np.where(inside, col, -1)
+    rows = _span(source.y, row[inside])
+    cols = _span(source.x, col[inside])
+    return PointPlan(
+        points, rows, cols, _from(row, rows.start), _from(col, cols.start), x, y
+    )
+
+
+def subdivisions(grid: Grid, source: Source) -> int:
+    """Sample points along a cell's side, so that no source cell under the grid is passed over."""
+    middle = Window(grid.n_rows // 2, grid.n_cols // 2, 1, 1)
+    x, y = _source_coordinates(grid, middle, source, 2)
+    width = max(float(np.ptp(x)) * 2 / source.x.step, float(np.ptp(y)) * 2 / source.y.step)
+    return int(np.clip(np.ceil(width), 1, MOST_SUBDIVISIONS))
+
+
+def sample_nearest(plan: PointPlan, values: Floats, valid: NDArray[np.bool_]) -> Floats:
+    """The mean of the source cells at each target cell's sample points, NaN under half valid."""
+    inside = plan.row >= 0
+    row, col = np.maximum(plan.row, 0), np.maximum(plan.col, 0)
+    good = inside & valid[row, col]
+    return _cell_means(np.where(good, values[row, col], 0.0), good, plan.points)
+
+
+def sample_bilinear(
+    plan: PointPlan, source: Source, values: Floats, valid: NDArray[np.bool_]
+) -> Floats:
+    """Bilinear at each sample point, averaged over a target cell's points."""
+    inside = plan.row >= 0
+    row, col = np.maximum(plan.row, 0), np.maximum(plan.col, 0)
+    low_row, row_share = _neighbours(source.y, plan.rows, row, plan.y)
+    low_col, col_share = _neighbours(source.x, plan.cols, col, plan.x)
+    summed = np.zeros(row.shape)
+    weight = np.zeros(row.shape)
+    for d_row in (0, 1):
+        at_row = np.minimum(low_row + d_row, values.shape[0] - 1)
+        w_row = row_share if d_row else 1.0 - row_share
+        for d_col in (0, 1):
+            at_col = np.minimum(low_col + d_col, values.shape[1] - 1)
+            w = w_row * (col_share if d_col else 1.0 - col_share)
+            w = np.where(valid[at_row, at_col], w, 0.0)
+            summed += w * np.where(valid[at_row, at_col], values[at_row, at_col], 0.0)
+            weight += w
+    good = inside & valid[row, col] & (weight > 0)
+    return _cell_means(np.divide(summed, weight, where=good, out=np.zeros_like(summed)), good,
+                       plan.points)
+
+
+def _cell_means(values: Floats, good: NDArray[np.bool_], points: int) -> Floats:
+    shape = (values.shape[0] // points, points, values.shape[1] // points, points)
+    count = good.reshape(shape).sum(axis=(1, 3))
+    total = np.where(good, values, 0.0).reshape(shape).sum(axis=(1, 3))
+    out = np.full(count.shape, np.nan)
+    np.divide(total, count, out=out, where=count >= LEAST_COVER * points**2)
+    return out
+
+
+def _source_coordinates(
+    grid: Grid, window: Window, source: Source, points: int
+) -> tuple[Floats, Floats]:
+    rows = _sub_centres(window.row, window.n_rows, points)
+    cols = _sub_centres(window.col, window.n_cols, points)
+    row_node = np.floor(rows / LATTICE).astype(np.int64)
+    col_node = np.floor(cols / LATTICE).astype(np.int64)
+    node_rows = np.arange(row_node[0], row_node[-1] + 2) * float(LATTICE)
+    node_cols = np.arange(col_node[0], col_node[-1] + 2) * float(LATTICE)
+    x, y = np.meshgrid(grid.left + grid.dx * node_cols, grid.top - grid.dy * node_rows)
+    source_x, source_y = transformer(grid.crs, source.crs).transform(x, y)
+    at = (row_node - row_node[0], col_node - col_node[0])
+    share = (rows / LATTICE - row_node, cols / LATTICE - col_node)
+    turn = 360.0 if source.x.period or _geographic(source) else 0.0
+    return _between_nodes(source_x, at, share, turn), _between_nodes(source_y, at, share, 0.0)
+
+
+def _geographic(source: Source) -> bool:
+    from mapper.grid import parse_crs  # noqa: PLC0415
+
+    return bool(parse_crs(source.crs).is_geographic)
+
+
+def _sub_centres(start: int, count: int, points: int) -> Floats:
+    fine = np.arange(start * points, (start + count) * points, dtype=np.float64)
+    return (fine + 0.5) / points
+
+
+def _between_nodes(
+    nodes: Floats, at: tuple[Ints, Ints], share: tuple[Floats, Floats], turn: float
+) -> Floats:
+    """Bilinear between lattice nodes; differences of longitude taken the short way round."""
+    corner = nodes[np.ix_(at[0], at[1])]
+    right = _short(nodes[np.ix_(at[0], at[1] + 1)] - corner, turn)
+    below = _short(nodes[np.ix_(at[0] + 1, at[1])] - corner, turn)
+    across = _short(nodes[np.ix_(at[0] + 1, at[1] + 1)] - corner, turn)
+    down, along = share[0][:, None], share[1][None, :]
+    return np.asarray(
+        corner + along * right + down * below + down * along * (across - right - below)
+    )
+
+
+def _short(difference: Floats, turn: float) -> Floats:
+    if not turn:
+        return difference
+    return np.mod(difference + turn / 2, turn) - turn / 2
+
+
+def _index(axis: Axis, values: Floats) -> Ints:
+    found = np.searchsorted(axis.edges, values, side="right") - 1
+    bad = (found < 0) | (found >= axis.size) | ~np.isfinite(values)
+    return np.where(bad, -1, found).astype(np.int64)
+
+
+def _span(axis: Axis, index: Ints) -> AxisPlan:
+    from scipy import sparse  # noqa: PLC0415
+
+    start, stop = max(int(index.min()) - 1, 0), min(int(index.max()) + 2, axis.size)
+    empty = sparse.csr_matrix((0, stop - start), dtype=np.float64)
+    return AxisPlan(start, stop, empty, np.empty(0, dtype=np.int64), axis.order[start:stop])
+
+
+def _from(index: Ints, start: int) -> Ints:
+    return np.where(index >= 0, index - start, -1)
+
+
+def _neighbours(axis: Axis, plan: AxisPlan, held: Ints, values: Floats) -> tuple[Ints, Floats]:
+    centres = axis.centres[plan.start : plan.stop]
+    if centres.size == 1:
+        return np.zeros_like(held), np.zeros(held.shape)
+    low = np.where(values < centres[held], held - 1, held)
+    low = np.clip(low, 0, centres.size - 2)
+    share = (values - centres[low]) / (centres[low + 1] - centres[low])
+    return low, np.clip(share, 0.0, 1.0)
