@@ -1,0 +1,41 @@
+"""The catalogue of rate laws: pure functions of arrays, each with its description."""
+
+from mapper.laws.catalogue import LAWS, NOT_RECOVERED, find_law, load_laws
+from mapper.laws.law import (
+    GAS_CONSTANT,
+    LAW_INPUTS,
+    ZERO_CELSIUS,
+    CheckPoint,
+    Floats,
+    Grade,
+    Input,
+    Law,
+    Parameter,
+    Spread,
+    Values,
+)
+from mapper.laws.product import BASES, compose
+from mapper.laws.responses import RESPONSES, Response, find_response
+
+__all__ = [
+    "BASES",
+    "GAS_CONSTANT",
+    "LAWS",
+    "LAW_INPUTS",
+    "NOT_RECOVERED",
+    "RESPONSES",
+    "ZERO_CELSIUS",
+    "CheckPoint",
+    "Floats",
+    "Grade",
+    "Input",
+    "Law",
+    "Parameter",
+    "Response",
+    "Spread",
+    "Values",
+    "compose",
+    "find_law",
+    "find_response",
+    "load_laws",
+]

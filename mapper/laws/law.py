@@ -11,6 +11,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
+Values = Floats | float
+"""A parameter: one number, or one a draw in an array of shape (n_draws, 1)."""
+
 Grade = Literal["read", "quoted", "memory", "computed", "project"]
 """How sure a number is: read in the paper; quoted from it elsewhere; from memory;
 computed from the formula; or this project's own choice."""
