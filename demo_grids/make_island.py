@@ -186,7 +186,7 @@ def bedrock(frame: Frame, rng: np.random.Generator) -> np.ndarray:
     arc = np.hypot((along - 44) / 20.0, (across + 20) / 15.0) < lobes
     code[arc] = 2
     code[np.hypot((along + 74) / 10.0, (across + 20) / 8.0) < lobes] = 2
-    code[np.hypot(along - 38, (across + 12) / 0.8) < 3.6 * lobes] = 3
+    code[np.hypot(along - 34, (across + 17) / 0.8) < 4.0 * lobes] = 3
     angle = np.arctan2(frame.across + 10, frame.along - 68)
     flows = 1 + 0.07 * np.sin(5 * angle) + 0.05 * np.sin(11 * angle + 1) + 0.08 * noise(rng, 16, 4)
     code[np.hypot(frame.along - 68, frame.across + 10) < 31.0 * flows] = 1
@@ -601,14 +601,15 @@ def _district_cells(island: Island, rng: np.random.Generator) -> np.ndarray:
     land = shrink(island.land.astype(float), 2) >= 0.5
     along, across = island.frame.along[::2, ::2], island.frame.across[::2, ::2]
     # outlines follow the coast loosely, and run out to sea off the bays
-    reach = ndimage.gaussian_filter(land.astype(float), 4) + 0.05 * shrink(noise(rng, 18, 2), 2)
-    domain = reach > 0.24
+    reach = ndimage.gaussian_filter(land.astype(float), 3) + 0.05 * shrink(noise(rng, 18, 2), 2)
+    domain = ndimage.binary_fill_holes(reach > 0.3)
     seats = [np.hypot(along - s[2][0], across - s[2][1]) for s in DISTRICTS]
     seats.append(np.hypot(along - WITHOUT_DISTRICT[0], across - WITHOUT_DISTRICT[1]))
     starts = [int(np.argmin(np.where(land, far, np.inf))) for far in seats]
     nearest = _least_climb(height + 40 * shrink(noise(rng, 10, 3), 2), starts)
     label = np.array([starts.index(int(start)) + 1 for start in nearest]).reshape(height.shape)
     label[label == len(DISTRICTS) + 1] = 0
+    label = ndimage.median_filter(label, 5)
     label[~domain] = 0
     islet = np.hypot(along - 20, across - 61) < 12
     label[islet & (label > 0)] = 7
@@ -653,7 +654,7 @@ def _round_off(arc: LineString) -> LineString:
         points[1:-1] = points[1:-1] / 2 + (points[:-2] + points[2:]) / 4
     if closed:
         points = np.vstack([points[1:-1], points[1:2]])
-    return LineString(points).simplify(0.0012, preserve_topology=True)
+    return LineString(points).simplify(0.0007, preserve_topology=True)
 
 
 def write_raster(path: Path, data: np.ndarray, factor: int, **how: object) -> None:
