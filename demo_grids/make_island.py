@@ -1,6 +1,6 @@
 """Make the layers of an invented island: invented demonstration data, no real place.
 
-The island ("Ostrava Rokh", which does not exist) lies in open ocean between 12 and 14 degrees
+The Isle of Mirrowmere, which does not exist, lies in open ocean between 12 and 14 degrees
 north. Every number here was made by this script from one seed; no measured data went in. The
 relief comes from a small landscape model (uplift against stream-power incision, in which the
 rock sets the resistance, then a drowned coast); the rain from moisture carried by a trade wind
