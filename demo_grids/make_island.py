@@ -7,7 +7,7 @@ rock sets the resistance, then a drowned coast); the rain from moisture carried 
 over that relief; runoff from rain and temperature by Turc's formula; plant cover from rain,
 height and rock. So the layers agree with one another, as those of a real place would.
 
-Run ``python demo_grids/make_island.py`` (about ten seconds); it writes beside itself:
+Run ``python demo_grids/make_island.py`` (about fifteen seconds); it writes beside itself:
 
 ==================  =====================================================================
 lithology.tif       rock codes, 0.0025 degrees, 0 = sea; legend.csv names them
