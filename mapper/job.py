@@ -29,7 +29,7 @@ LAYER_NAMES = (
 )
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
-RUNOFF_METHODS = ("turc-1954",)
+RUNOFF_METHODS = ("turc-1954", "turc-pike")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 

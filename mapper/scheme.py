@@ -139,24 +139,30 @@ def _check_parameter_names(job: Job, laws: tuple[Law, ...], problems: Problems) 
 
 
 def _rock_law(law: Law, rock: str, job: Job) -> RockLaw:
-    if rock not in law.rocks:
-        raise LawError(
-            f"law {law.name!r} has no numbers for {rock}, and the legend holds it",
-            where=f"{job.path}, law; the law serves {', '.join(law.rocks)}",
-            fix=f'[law.by_rock] with "{rock}" = a law that serves it; see saprolite laws',
-        )
-    values = law.central_values(rock)
+    values: dict[str, float] = {}
     changed: list[str] = []
     for one in law.parameters:
-        spec = job.law.parameters.get(one.name)
-        asked = _asked(spec, rock)
-        if asked is None:
-            continue
-        _check_range(one, asked, job)
-        if asked != values[one.name]:
-            changed.append(f"{one.name} = {asked:g} {one.unit} (published {values[one.name]:g})")
-            values[one.name] = asked
+        published = one.value(rock)
+        asked = _asked(job.law.parameters.get(one.name), rock)
+        if asked is None and published is None:
+            raise _serves_not(law, one, rock, job)
+        if asked is not None and asked != published:
+            _check_range(one, asked, job)
+            was = "none for this rock" if published is None else f"{published:g}"
+            changed.append(f"{one.name} = {asked:g} {one.unit} (published: {was})")
+        values[one.name] = asked if asked is not None else float(published or 0.0)
+    if rock not in law.rocks and not any(one.by_rock for one in law.parameters):
+        raise _serves_not(law, None, rock, job)
     return RockLaw(law, values, tuple(changed))
+
+
+def _serves_not(law: Law, parameter: Parameter | None, rock: str, job: Job) -> LawError:
+    own = "" if parameter is None else f", or {parameter.name} = {{ by_rock = {{ {rock!r} = ... }} }}"
+    return LawError(
+        f"law {law.name!r} has no numbers for {rock}, and the legend holds it",
+        where=f"{job.path}, law; the law serves {', '.join(law.rocks)}",
+        fix=f'[law.by_rock] with "{rock}" = a law that serves it (see saprolite laws){own}',
+    )
 
 
 def _asked(spec: ParameterSpec | None, rock: str) -> float | None:
