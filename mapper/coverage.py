@@ -174,7 +174,7 @@ def cover_tile(edges: Floats, tile: Window) -> Floats:
     summed += np.bincount(
         at[inner] + 1, weights=(rise * mean)[inner], minlength=tile.n_rows * width
     )
-    share = np.cumsum(summed.reshape(tile.n_rows, width), axis=1)[:, :-1]
+    share: Floats = np.cumsum(summed.reshape(tile.n_rows, width), axis=1, dtype=np.float64)[:, :-1]
     share[np.abs(share) < ROUNDING] = 0.0
     share[np.abs(share - 1.0) < ROUNDING] = 1.0
     return share

@@ -154,7 +154,9 @@ def _outside_flag(name: str) -> Flag:
 def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
     """The layers that the laws read, on a window, each of shape (n_cells,)."""
     needed = plan.scheme.input_names()
-    inputs = {name: plan.layers[name].values(window).ravel() for name in needed if name in plan.layers}
+    inputs = {
+        name: plan.layers[name].values(window).ravel() for name in needed if name in plan.layers
+    }
     if "runoff" in needed and "runoff" not in plan.layers:
         water = plan.layers["precipitation"].values(window).ravel()
         warmth = inputs.get("temperature")

@@ -94,7 +94,8 @@ def _refuse_changes(old: Mapping[str, Any], new: Mapping[str, Any], folder: Path
     changed = sorted(key for key in {*old, *new} if old.get(key) != new.get(key))
     if changed:
         raise RunFolderError(
-            f"the folder holds an unfinished run of another job; changed since: {', '.join(changed)}",
+            "the folder holds an unfinished run of another job; changed since: "
+            + ", ".join(changed),
             where=str(folder),
             fix="--fresh to start over, or --out DIR for another folder",
         )

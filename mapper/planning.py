@@ -9,19 +9,19 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
+from mapper.coverage import polygons_on
 from mapper.engine import Plan
 from mapper.errors import GridError, JobError, Problems
 from mapper.grid import Grid, Window, blocks, parse_crs, same_crs
 from mapper.job import GridSpec, Job, LayerSpec
-from mapper.layers.layer import Layer, How, how_aligned, open_layer, open_source, place, source_grid
+from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
 from mapper.layers.lithology import Lithology, unknown_codes
 from mapper.layers.source import Source, file_kind
+from mapper.layers.vector import read_vector, reproject, valid_shapes
 from mapper.layers.warp import subdivisions
 from mapper.legend import Legend, normal_code, read_legend
 from mapper.regions import Regions, open_regions
 from mapper.scheme import Scheme, build_scheme
-from mapper.coverage import polygons_on
-from mapper.layers.vector import read_vector, reproject, valid_shapes
 
 BLOCK_CELLS = 2**20
 MOST_SAMPLED_CELLS = 2**22
@@ -130,7 +130,9 @@ def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
 
 def _finest(sources: Mapping[str, Source]) -> str:
     geographic = {name: bool(parse_crs(one.crs).is_geographic) for name, one in sources.items()}
-    return min(sources, key=lambda name: sources[name].x.step * (1 if not geographic[name] else 1e5))
+    return min(
+        sources, key=lambda name: sources[name].x.step * (1 if not geographic[name] else 1e5)
+    )
 
 
 def _spelled_grid(spec: GridSpec, job: Job) -> Grid:
@@ -287,4 +289,3 @@ def block_shape(plan: Plan) -> tuple[int, int]:
     if strips and largest.block[0] < 1024:
         return max(1, min(grid.n_rows, BLOCK_CELLS // grid.n_cols)), grid.n_cols
     return min(grid.n_rows, 1024), min(grid.n_cols, 1024)
-

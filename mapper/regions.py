@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections import Counter
 from dataclasses import dataclass
 from typing import Any, NamedTuple
@@ -102,9 +103,14 @@ def open_regions(spec: RegionsSpec, grid: Grid) -> Regions:
     return Regions(names, polygons, shapes, tuple(notes))
 
 
+def is_missing(value: Any) -> bool:
+    """Whether an id is empty: None or NaN."""
+    return value is None or (isinstance(value, float) and math.isnan(value))
+
+
 def _names(values: tuple[Any, ...], spec: RegionsSpec, where: str) -> tuple[str, ...]:
     problems = Problems()
-    empty = [n for n, one in enumerate(values, start=1) if one is None or one != one]
+    empty = [n for n, one in enumerate(values, start=1) if is_missing(one)]
     if empty:
         problems.add(
             RegionError(

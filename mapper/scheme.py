@@ -119,7 +119,9 @@ def _check_rock_names(job: Job, problems: Problems) -> None:
             near = difflib.get_close_matches(rock, ROCK_NAMES, n=1, cutoff=0.0)[0]
             problems.add(
                 JobError(
-                    f"{rock!r} is not a rock", where=f"{job.path}, law.by_rock", fix=f'"{near}" = ...'
+                    f"{rock!r} is not a rock",
+                    where=f"{job.path}, law.by_rock",
+                    fix=f'"{near}" = ...',
                 )
             )
 
@@ -157,7 +159,9 @@ def _rock_law(law: Law, rock: str, job: Job) -> RockLaw:
 
 
 def _serves_not(law: Law, parameter: Parameter | None, rock: str, job: Job) -> LawError:
-    own = "" if parameter is None else f", or {parameter.name} = {{ by_rock = {{ {rock!r} = ... }} }}"
+    own = (
+        "" if parameter is None else f", or {parameter.name} = {{ by_rock = {{ {rock!r} = ... }} }}"
+    )
     return LawError(
         f"law {law.name!r} has no numbers for {rock}, and the legend holds it",
         where=f"{job.path}, law; the law serves {', '.join(law.rocks)}",

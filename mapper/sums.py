@@ -81,7 +81,9 @@ def totals(counts: Counts, exponent: int) -> Floats:
     """
     flat = counts.reshape(-1, LIMBS)
     values = [
-        math.ldexp(float(sum(int(part) << (LIMB_BITS * at) for at, part in enumerate(row))), exponent)
+        math.ldexp(
+            float(sum(int(part) << (LIMB_BITS * at) for at, part in enumerate(row))), exponent
+        )
         for row in flat
     ]
     return np.array(values, dtype=np.float64).reshape(counts.shape[:-1])

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import json
+import math
 import os
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
@@ -61,5 +62,5 @@ def safe_cell(value: Any) -> Any:
     if isinstance(value, str):
         return f"'{value}" if value.startswith(_FORMULA_STARTS) else value
     if isinstance(value, float):
-        return "" if value != value else f"{value:.10g}"
+        return "" if math.isnan(value) else f"{value:.10g}"
     return value

@@ -15,10 +15,9 @@ from mapper.accounting import DAYS_PER_YEAR, MOLAR_MASS
 from mapper.engine import Plan
 from mapper.grid import parse_crs
 from mapper.job import Job
-from mapper.layers.layer import Layer
+from mapper.layers.layer import QUANTITY, Layer
 from mapper.scheme import RockLaw
 from mapper.units import INNER_UNIT
-from mapper.layers.layer import QUANTITY
 
 _LIBRARIES = ("numpy", "scipy", "xarray", "rioxarray", "rasterio", "pyproj", "shapely", "dask")
 

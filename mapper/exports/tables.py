@@ -76,9 +76,7 @@ def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
 
 def region_rows(found: Totals) -> list[list[Any]]:
     """Rows of ``regions.csv``: each region, then 'outside', then 'all'."""
-    rows = [
-        _row([name], found.area[at], found, np.s_[at]) for at, name in enumerate(found.names)
-    ]
+    rows = [_row([name], found.area[at], found, np.s_[at]) for at, name in enumerate(found.names)]
     return [*rows, _row(["all"], found.area.sum(), found, np.s_[:])]
 
 

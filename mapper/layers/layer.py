@@ -202,9 +202,7 @@ def place(source: Source, grid: Grid, *, where: str) -> Source:
         left, bottom, right, top = grid.bounds
         if grid.is_geographic:
             source = replace(source, x=nearest_turn(source.x, left, right))
-        apart = not source.x.period and (
-            source.x.edges[-1] <= left or source.x.edges[0] >= right
-        )
+        apart = not source.x.period and (source.x.edges[-1] <= left or source.x.edges[0] >= right)
         if apart or source.y.edges[-1] <= -top or source.y.edges[0] >= -bottom:
             raise _misses(source, grid, where)
         return source
@@ -255,7 +253,7 @@ def _same_cells(axis: Axis, start: float, step: float) -> bool:
     if not axis.is_regular or abs(axis.step - step) * axis.size > SAME_TOLERANCE * step:
         return False
     offset = (start - axis.edges[0]) / step
-    return abs(offset - round(offset)) <= SAME_TOLERANCE
+    return bool(abs(offset - round(offset)) <= SAME_TOLERANCE)
 
 
 def axis_plans(

@@ -58,7 +58,7 @@ class Lithology:
         LegendError where a code is not in the legend and the job does not say what to do.
         """
         cells, codes, shares, names = self._coded(window)
-        return _to_rocks(cells, codes, shares, self._mixtures(names, cells, codes, window))
+        return _to_rocks(cells, codes, shares, self._mixtures(names, codes, window))
 
     def codes_in(self, window: Window) -> Mapping[str, float]:
         """Each code or name in a window, and how many cells it fills."""
@@ -108,7 +108,7 @@ class Lithology:
         return unique[:, 1], unique[:, 0], count / self.points**2
 
     def _mixtures(
-        self, names: tuple[str, ...], cells: Ints, codes: Ints, window: Window
+        self, names: tuple[str, ...], codes: Ints, window: Window
     ) -> list[list[tuple[int, float]]]:
         known = [self.legend.mixtures.get(normal_code(name)) for name in names]
         present = np.bincount(codes, minlength=len(names))
@@ -120,8 +120,7 @@ class Lithology:
         if missing and self.spec.unknown == "error":
             raise unknown_codes(missing, self.spec, self.legend, window)
         return [
-            [(ROCK_NAMES.index(rock), share) for rock, share in mixture or ()]
-            for mixture in known
+            [(ROCK_NAMES.index(rock), share) for rock, share in mixture or ()] for mixture in known
         ]
 
 
@@ -149,13 +148,15 @@ def _to_rocks(
     else:
         for position, mixture in enumerate(mixtures):
             here = np.flatnonzero(codes == position)
-            for rock_index, share in mixture:
+            for rock_index, part in mixture:
                 filled = np.full(here.size, rock_index, dtype=np.int64)
-                parts.append((cells[here], filled, shares[here] * share))
+                parts.append((cells[here], filled, shares[here] * part))
     if not parts or not sum(part[0].size for part in parts):
         none = np.empty(0, dtype=np.int64)
         return RockCells(none, none.copy(), np.empty(0))
-    cell, rock, share = (np.concatenate(one) for one in zip(*parts, strict=True))
+    cell = np.concatenate([part[0] for part in parts])
+    rock = np.concatenate([part[1] for part in parts])
+    share = np.concatenate([part[2] for part in parts])
     return _ordered(cell, rock, share)
 
 

@@ -40,7 +40,7 @@ def read_vector(
     MissingFileError, FileFormatError, RegionError for features that are not polygons, GridError
     where the CRS is missing.
     """
-    if file_kind(path, where=where) not in ("vector",) and not path.lower().endswith(".shp"):
+    if file_kind(path, where=where) != "vector" and not path.lower().endswith(".shp"):
         raise FileFormatError(
             "the file holds no vectors", where=where, fix="a GeoPackage, GeoJSON, Shapefile ..."
         )
@@ -79,9 +79,7 @@ def _refuse_lines(shapes: NDArray[Any], where: str) -> None:
         )
 
 
-def valid_shapes(
-    shapes: NDArray[Any], names: tuple[str, ...]
-) -> tuple[NDArray[Any], list[str]]:
+def valid_shapes(shapes: NDArray[Any], names: tuple[str, ...]) -> tuple[NDArray[Any], list[str]]:
     """Repair shapes that cross themselves, and say by how much their area changed."""
     notes: list[str] = []
     fixed = shapes.copy()
@@ -91,7 +89,9 @@ def valid_shapes(
     for at in np.flatnonzero(~shapely.is_valid(fixed)):
         repaired = shapely.make_valid(fixed[at], method="structure")
         change = shapely.area(repaired) - shapely.area(fixed[at])
-        notes.append(f"{names[at]!r} crossed itself: repaired, area changed by {change:g} CRS units2")
+        notes.append(
+            f"{names[at]!r} crossed itself: repaired, area changed by {change:g} CRS units2"
+        )
         fixed[at] = repaired
     return fixed, notes
 
