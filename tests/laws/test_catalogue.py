@@ -72,7 +72,7 @@ def test_what_was_not_recovered_is_said():
 
 
 def test_an_unknown_law_names_the_nearest_and_all():
-    with pytest.raises(KeyError, match="did you mean 'dessert-2003'.*There are: product"):
+    with pytest.raises(KeyError, match=r"did you mean 'dessert-2003'.*There are: product"):
         find_law("desert-2003")
 
 
