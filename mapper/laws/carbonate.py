@@ -18,15 +18,21 @@ from mapper.laws.responses import RUNOFF, pass_water
 from mapper.laws.rock_groups import CARBONATE_ROCKS
 
 MILLIMOLES_PER_MOLE = 1e3
-N_ITERATIONS = 12  # leaves less than 1e-9 of the concentration, over the whole range
+N_ITERATIONS = 8  # leaves less than 1e-8 of the concentration, over the whole range
 
 # log10 K = a + b T + c/T + d log10 T + e/T^2, T in K, 0 to 90 degC: Plummer & Busenberg 1982,
-# Geochim. Cosmochim. Acta 46:1011-1040, quoted. The pair CaHCO3+ is quoted from the constants of
-# the phreeqc.dat database, which gives it to the same paper.
+# Geochim. Cosmochim. Acta 46:1011-1040, quoted. The constant of the pair CaHCO3+ is
+# quoted from the phreeqc.dat database; the paper it goes back to was not seen.
 FIRST_DISSOCIATION = (-356.3094, -0.06091964, 21834.37, 126.8339, -1684915.0)
 SECOND_DISSOCIATION = (-107.8871, -0.03252849, 5151.79, 38.92561, -563713.9)
 CALCITE_SOLUBILITY = (-171.9065, -0.077993, 2839.319, 71.595, 0.0)
 CO2_SOLUBILITY = (108.3865, 0.01985076, -6919.53, -40.45154, 669365.0)
+DISSOLUTION = tuple(  # CaCO3 + CO2 + H2O = Ca + 2 HCO3: K1 Kc KH / K2, term by term
+    first - second + calcite + gas
+    for first, second, calcite, gas in zip(
+        FIRST_DISSOCIATION, SECOND_DISSOCIATION, CALCITE_SOLUBILITY, CO2_SOLUBILITY, strict=True
+    )
+)
 BICARBONATE_PAIR = (1209.120, 0.31294, -34765.05, -478.782, 0.0)
 
 # A of Debye and Hueckel, 0.4883 + 8.074e-4 t with t in degC, from memory (0.5085 at 25 degC), and
@@ -34,6 +40,7 @@ BICARBONATE_PAIR = (1209.120, 0.31294, -34765.05, -478.782, 0.0)
 DEBYE_HUECKEL_AT_ZERO = 0.4883
 DEBYE_HUECKEL_SLOPE = 8.074e-4
 DAVIES = 0.3
+LN_10 = 2.302585092994046
 
 
 def equilibrium_constant(temperature: Floats, *, terms: tuple[float, ...]) -> Floats:
@@ -45,7 +52,7 @@ def equilibrium_constant(temperature: Floats, *, terms: tuple[float, ...]) -> Fl
     -8.4798
     """
     constant, slope, inverse, logarithm, square = terms
-    fall = inverse / temperature + square / temperature**2
+    fall = (inverse + square / temperature) / temperature
     return np.asarray(constant + slope * temperature + fall + logarithm * np.log10(temperature))
 
 
@@ -61,7 +68,7 @@ def activity_coefficient(temperature: Floats, ionic_strength: Floats) -> Floats:
     """
     root = np.sqrt(ionic_strength)
     slope = DEBYE_HUECKEL_AT_ZERO + DEBYE_HUECKEL_SLOPE * (temperature - ZERO_CELSIUS)
-    return np.asarray(10.0 ** (-slope * (root / (1.0 + root) - DAVIES * ionic_strength)))
+    return np.asarray(np.exp(-LN_10 * slope * (root / (1.0 + root) - DAVIES * ionic_strength)))
 
 
 def saturated_calcium(
@@ -89,12 +96,7 @@ def saturated_calcium(
     >>> round(float(saturated_calcium(283.15, 10**-2.5)), 2)
     1.4
     """
-    product = soil_co2 * 10.0 ** (
-        equilibrium_constant(temperature, terms=FIRST_DISSOCIATION)
-        - equilibrium_constant(temperature, terms=SECOND_DISSOCIATION)
-        + equilibrium_constant(temperature, terms=CALCITE_SOLUBILITY)
-        + equilibrium_constant(temperature, terms=CO2_SOLUBILITY)
-    )
+    product = soil_co2 * 10.0 ** equilibrium_constant(temperature, terms=DISSOLUTION)
     pairing = 10.0 ** equilibrium_constant(temperature, terms=BICARBONATE_PAIR)
     calcium = np.cbrt(product / 4.0)
     paired = 0.0 * calcium
@@ -113,9 +115,9 @@ def _correct(
     calcium, paired = before
     bicarbonate = calcium * (2.0 + paired)
     single = activity_coefficient(temperature, 0.5 * calcium * (4.0 + (2.0 + paired) + paired))
-    double = single**4
+    double = np.square(np.square(single))
     paired = pairing * double * bicarbonate
-    calcium = np.cbrt(product / (double * single**2 * (2.0 + paired) ** 2))
+    calcium = np.cbrt(product / (double * np.square(single * (2.0 + paired))))
     return calcium, paired
 
 
