@@ -8,8 +8,11 @@ import time
 
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 
 from mapper.errors import LawError, ManyProblemsError, MapperError, UnitError
+from mapper.expression import WRITABLE
 from mapper.formula import formula_law
 from mapper.laws import LAWS
 
@@ -172,6 +175,7 @@ def test_a_power_by_a_parameter_needs_a_base_without_unit():
         "a * runoff / (vegetation - vegetation)",
         "a * runoff / (1 / (vegetation * 0))",
         "a * runoff * log(vegetation - 1)",
+        "a * runoff * log(vegetation - 2)",
         "a * runoff * sqrt(vegetation - 2)",
         "a * runoff * (vegetation - 1) ** -2",
         "a * runoff * (vegetation - 2) ** 0.5",
@@ -304,3 +308,16 @@ def test_a_formula_without_a_layer_is_refused():
     flux = {"a": {"value": 1.0, "unit": "mol m-2 yr-1"}}
     with pytest.raises(LawError, match="reads no layer"):
         make("a", {}, flux)
+
+
+WORDS = ["a", "runoff", "exp", "log", "minimum", "(", ")", "+", "-", "*", "/", "**", ",", "2", "."]
+
+
+@settings(max_examples=150, deadline=None, derandomize=True)
+@given(st.text(sorted(WRITABLE), max_size=60) | st.lists(st.sampled_from(WORDS)).map(" ".join))
+def test_any_text_is_a_law_or_a_refusal(text):
+    try:
+        law = make(text)
+    except LawError:
+        return
+    assert rate_of(law, [0.0, 1000.0]).shape == (2,)
