@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Literal
 
-from mapper.rocks import ROCKS, Rock
+from mapper.rocks import Rock
 
 MOLAR_MASS = {
     # g mol-1, IUPAC standard atomic weights; checked in the tests against periodictable

@@ -182,8 +182,14 @@ def same_crs(first: str, second: str) -> bool:
     if one.equals(two, ignore_axis_order=True):
         return True
     if one.is_geographic and two.is_geographic:
-        return _datum_key(one) == _datum_key(two)
+        keys = _datum_key(one), _datum_key(two)
+        return keys[0] == keys[1] or any(key[2] in _UNNAMED_DATUMS for key in keys)
     return False
+
+
+_UNNAMED_DATUMS = ("", "undefined", "unknown")
+"""Files of climate models name no datum, or a sphere without one; their longitudes and latitudes
+are then taken as they stand, since shifting them by a guessed datum would do harm."""
 
 
 def _datum_key(crs: CRS) -> tuple[float, float, str]:
@@ -193,6 +199,7 @@ def _datum_key(crs: CRS) -> tuple[float, float, str]:
     plain = "".join(letter for letter in name if letter.isalnum())
     if "wgs84" in plain or "wgs1984" in plain or "worldgeodeticsystem1984" in plain:
         plain = "wgs84"
+    plain = "unknown" if plain.startswith("unknown") else plain
     if ellipsoid is None:
         return 0.0, 0.0, plain
     return ellipsoid.semi_major_metre, ellipsoid.inverse_flattening, plain

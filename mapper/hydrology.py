@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable, Mapping
+from types import MappingProxyType
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -10,37 +13,66 @@ from mapper.laws.law import ZERO_CELSIUS
 Floats = NDArray[np.float64]
 
 
-def turc_evapotranspiration(precipitation: Floats, temperature: Floats) -> Floats:
+def turc_power(temperature: Floats) -> Floats:
+    """The evaporating power of the air after Turc (1954) [mm yr-1].
+
+    L = 300 + 25 T + 0.05 T^3 with the year's mean T in degrees Celsius, taken as 0 in colder
+    cells. Quoted from later texts; the clamp is common practice.
+
+    Parameters
+    ----------
+    temperature : [K].
+    """
+    celsius = np.maximum(temperature - ZERO_CELSIUS, 0.0)
+    return 300.0 + 25.0 * celsius + 0.05 * celsius**3
+
+
+def evapotranspiration_turc(precipitation: Floats, temperature: Floats) -> Floats:
     """Actual evapotranspiration of a year after Turc (1954) [mm yr-1].
+
+    AET = P / sqrt(0.9 + (P/L)^2), and P itself where P/L <= 0.316: dry ground then sheds nothing.
 
     Parameters
     ----------
     precipitation : [mm yr-1]. temperature : mean of the year [K].
 
-    Notes
-    -----
-    AET = P / sqrt(0.9 + (P/L)^2), and P itself where P/L <= 0.316, with L = 300 + 25 T + 0.05 T^3
-    and T in degrees Celsius, taken as 0 in colder cells. The formula is quoted from later texts;
-    the clamp is common practice.
-
     References
     ----------
-    Turc, L. (1954), Annales agronomiques 5.
+    Turc, L. (1954), Annales agronomiques 5. Quoted from later texts.
 
     Examples
     --------
     >>> import numpy as np
-    >>> turc_evapotranspiration(np.array([1000.0]), np.array([293.15])).round(1)
+    >>> evapotranspiration_turc(np.array([1000.0]), np.array([293.15])).round(1)
     array([791.9])
     """
-    celsius = np.maximum(temperature - ZERO_CELSIUS, 0.0)
-    power = 300.0 + 25.0 * celsius + 0.05 * celsius**3
-    ratio = precipitation / power
+    ratio = precipitation / turc_power(temperature)
     wet = precipitation / np.sqrt(0.9 + ratio**2)
     return np.where(ratio <= 0.316, precipitation, np.minimum(wet, precipitation))
 
 
-def runoff(precipitation: Floats, temperature: Floats) -> Floats:
-    """Runoff of a year as precipitation less Turc evapotranspiration [mm yr-1]."""
-    evaporated = turc_evapotranspiration(precipitation, temperature)
-    return np.maximum(precipitation - evaporated, 0.0)
+def evapotranspiration_turc_pike(precipitation: Floats, temperature: Floats) -> Floats:
+    """Actual evapotranspiration after Turc-Pike, with Turc's power of the air [mm yr-1].
+
+    AET/P = 1 / sqrt(1 + (P/L)^2): never all of P, so that dry ground sheds a little. The form is
+    quoted; that L stands for the potential evapotranspiration is this project's choice.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> evapotranspiration_turc_pike(np.array([1200.0]), np.array([293.15])).round(1)
+    array([848.5])
+    """
+    ratio = precipitation / turc_power(temperature)
+    return np.asarray(precipitation / np.sqrt(1.0 + ratio**2))
+
+
+METHODS: Mapping[str, Callable[[Floats, Floats], Floats]] = MappingProxyType(
+    {"turc-1954": evapotranspiration_turc, "turc-pike": evapotranspiration_turc_pike}
+)
+"""Evapotranspiration of a year from precipitation [mm yr-1] and temperature [K], by name."""
+
+
+def derive_runoff(method: str, precipitation: Floats, temperature: Floats) -> Floats:
+    """Runoff of a year as precipitation less evapotranspiration by a named method [mm yr-1]."""
+    return np.asarray(precipitation - METHODS[method](precipitation, temperature))

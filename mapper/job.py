@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import math
 import os
 import re
 import tomllib
@@ -29,7 +30,7 @@ LAYER_NAMES = (
 )
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
-RUNOFF_METHODS = ("turc-1954",)
+RUNOFF_METHODS = ("turc-1954", "turc-pike")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 
@@ -239,7 +240,7 @@ class _Table:
         if isinstance(value, bool) or not isinstance(value, int | float):
             self.wrong(key, "a number", f"{key} = 1.0, without quotes")
             return None
-        if value != value or value in (float("inf"), float("-inf")):
+        if not math.isfinite(value):
             self.wrong(key, "a finite number", f"{key} = 1.0")
             return None
         return float(value)

@@ -149,7 +149,7 @@ def nearest_turn(axis: Axis, low: float, high: float) -> Axis:
         return axis
 
     def overlap(by: float) -> float:
-        return min(high, axis.edges[-1] + by) - max(low, axis.edges[0] + by)
+        return float(min(high, axis.edges[-1] + by) - max(low, axis.edges[0] + by))
 
     return axis.shifted(max((0.0, -360.0, 360.0), key=overlap))
 

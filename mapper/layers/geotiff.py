@@ -85,10 +85,12 @@ def _band_number(dataset: Any, spec: LayerSpec) -> int:
         names = {str(number): number for number in bands}
         names |= {dataset.descriptions[number - 1]: number for number in bands}
         if spec.variable in names:
-            return names[spec.variable]
+            return int(names[spec.variable])
         known = ", ".join(str(name) for name in names if name)
         raise FileFormatError(
-            f"there is no band {spec.variable!r}", where=spec.where, fix=f"variable = one of {known}"
+            f"there is no band {spec.variable!r}",
+            where=spec.where,
+            fix=f"variable = one of {known}",
         )
     if len(bands) != 1:
         raise FileFormatError(
@@ -133,9 +135,7 @@ def _checked_crs(dataset: Any, spec: LayerSpec) -> str:
     return str(dataset.crs.to_wkt())
 
 
-def _nodata(
-    dataset: Any, band: int, spec: LayerSpec
-) -> tuple[tuple[float, ...], tuple[str, ...]]:
+def _nodata(dataset: Any, band: int, spec: LayerSpec) -> tuple[tuple[float, ...], tuple[str, ...]]:
     tag = dataset.nodatavals[band - 1]
     values = list(spec.nodata)
     notes: tuple[str, ...] = ()
@@ -161,9 +161,7 @@ def _opened(path: str) -> xr.DataArray:
     return opened
 
 
-def read_window(
-    source: Source, rows: slice, cols: slice
-) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values and the file's own mask for one window in file order."""
     band = int(source.variable or 1)
     try:

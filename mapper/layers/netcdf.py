@@ -27,7 +27,10 @@ def _opened(path: str) -> xr.Dataset:
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
     return xr.open_dataset(
-        path, engine=engine, decode_cf=False, cache=False  # raw values: decoded once, by us
+        path,
+        engine=engine,
+        decode_cf=False,
+        cache=False,  # raw values: decoded once, by us
     )
 
 
@@ -230,7 +233,9 @@ def _nodata(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, ...]:
     return tuple(dict.fromkeys(values))
 
 
-def _chunk(variable: xr.DataArray, dims: tuple[str, str], shape: tuple[int, int]) -> tuple[int, int]:
+def _chunk(
+    variable: xr.DataArray, dims: tuple[str, str], shape: tuple[int, int]
+) -> tuple[int, int]:
     chunks = variable.encoding.get("chunksizes")
     if not chunks:
         return shape
@@ -238,9 +243,7 @@ def _chunk(variable: xr.DataArray, dims: tuple[str, str], shape: tuple[int, int]
     return int(sizes[dims[0]]), int(sizes[dims[1]])
 
 
-def read_window(
-    source: Source, rows: slice, cols: slice
-) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values for one window in file order; NetCDF has no separate mask."""
     variable = _opened(source.path)[source.variable]
     x_name, y_name = _dims(_opened(source.path), variable)

@@ -21,7 +21,9 @@ LEAST_SHARE = 1e-7
 """Shares of a cell below this are rounding, not rock."""
 
 
-def resample(rows: AxisPlan, cols: AxisPlan, values: Floats, valid: Bools, method: Method) -> Floats:
+def resample(
+    rows: AxisPlan, cols: AxisPlan, values: Floats, valid: Bools, method: Method
+) -> Floats:
     """Nearest, bilinear or area-weighted mean of a source window on target cells.
 
     Parameters
@@ -44,7 +46,9 @@ def resample(rows: AxisPlan, cols: AxisPlan, values: Floats, valid: Bools, metho
     weight = total
     if not valid.all():
         part = _product(rows.weights, cols.weights, valid.astype(np.float64), method)
-        touched = _product(_ones(rows.weights), _ones(cols.weights), (~valid) * 1.0, method)
+        touched = _product(
+            _ones(rows.weights), _ones(cols.weights), (~valid).astype(np.float64), method
+        )
         weight = np.where(touched == 0.0, total, part)
     if method == "bilinear":
         _, good = _picked(rows, cols, values, valid)

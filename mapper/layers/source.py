@@ -153,7 +153,9 @@ def file_kind(path: str, *, where: str) -> FileKind:
     file = Path(path)
     if not file.exists():
         raise MissingFileError(
-            f"there is no file {file.name!r}", where=where, fix=f"a file that exists in {file.parent}"
+            f"there is no file {file.name!r}",
+            where=where,
+            fix=f"a file that exists in {file.parent}",
         )
     if file.is_dir():
         raise FileFormatError(

@@ -53,9 +53,7 @@ def plan_points(grid: Grid, window: Window, source: Source, points: int) -> Poin
     row, col = np.where(inside, row, -1), np.where(inside, col, -1)
     rows = _span(source.y, row[inside])
     cols = _span(source.x, col[inside])
-    return PointPlan(
-        points, rows, cols, _from(row, rows.start), _from(col, cols.start), x, y
-    )
+    return PointPlan(points, rows, cols, _from(row, rows.start), _from(col, cols.start), x, y)
 
 
 def subdivisions(grid: Grid, source: Source) -> int:
@@ -94,8 +92,9 @@ def sample_bilinear(
             summed += w * np.where(valid[at_row, at_col], values[at_row, at_col], 0.0)
             weight += w
     good = inside & valid[row, col] & (weight > 0)
-    return _cell_means(np.divide(summed, weight, where=good, out=np.zeros_like(summed)), good,
-                       plan.points)
+    return _cell_means(
+        np.divide(summed, weight, where=good, out=np.zeros_like(summed)), good, plan.points
+    )
 
 
 def _cell_means(values: Floats, good: NDArray[np.bool_], points: int) -> Floats:

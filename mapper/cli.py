@@ -1,0 +1,189 @@
+"""Arguments in, messages and exit codes out."""
+
+from __future__ import annotations
+
+import argparse
+import sys
+import time
+from collections.abc import Sequence
+from typing import TYPE_CHECKING, TextIO
+
+if TYPE_CHECKING:
+    from mapper.pipeline import RunResult
+
+DONE, OUR_FAULT, USERS_INPUT = 0, 1, 2
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run the command; returns the exit code: 0 done, 2 the user's input, 1 our fault."""
+    parser = _parser()
+    chosen = parser.parse_args(arguments)
+    if chosen.command is None:
+        parser.print_help()
+        return DONE
+    from mapper.errors import MapperError  # noqa: PLC0415 - --help imports none of the libraries
+
+    try:
+        return int(chosen.action(chosen))
+    except MapperError as problem:
+        print(f"saprolite: {problem}", file=sys.stderr)  # noqa: T201
+        return USERS_INPUT
+    except KeyboardInterrupt:
+        print(  # noqa: T201
+            "\nsaprolite: stopped; run the same command again to go on where it stopped",
+            file=sys.stderr,
+        )
+        return 130
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="saprolite",
+        description="Map and add up the CO2 that rock weathering takes up: grids of lithology, "
+        "temperature, runoff and vegetation in; drawdown maps and regional totals out.",
+        epilog="Screening estimates, not verified removal. Exit code 0: done; 2: something in "
+        "the input to mend, with what to write instead; 1: a fault of saprolite.",
+    )
+    commands = parser.add_subparsers(dest="command", metavar="COMMAND")
+    run = commands.add_parser("run", help="run a job and write its folder of maps and tables")
+    run.add_argument("job", metavar="JOB", help="the job file (TOML)")
+    run.add_argument("--out", metavar="DIR", help="folder to write; default: the job's own")
+    run.add_argument("--fresh", action="store_true", help="start over where a run was cut short")
+    run.add_argument("--threads", type=_positive, metavar="N", help="default: all processors")
+    run.set_defaults(action=_run)
+    inspect = commands.add_parser("inspect", help="look at a job before it runs, problems and all")
+    inspect.add_argument("job", metavar="JOB", help="the job file (TOML)")
+    inspect.set_defaults(action=_inspect)
+    laws = commands.add_parser("laws", help="list the rate laws, or show one")
+    laws.add_argument("name", nargs="?", metavar="NAME", help="a law to show in full")
+    laws.set_defaults(action=_laws)
+    return parser
+
+
+def _positive(text: str) -> int:
+    if not text.isdigit() or int(text) < 1:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a whole number of 1 or more")
+    return int(text)
+
+
+def _run(chosen: argparse.Namespace) -> int:
+    from mapper.job import load_job  # noqa: PLC0415
+    from mapper.pipeline import run  # noqa: PLC0415
+
+    bar = ProgressBar(sys.stderr)
+    job = load_job(chosen.job)
+    result = run(
+        job, out=chosen.out, fresh=chosen.fresh, threads=chosen.threads, progress=bar.update
+    )
+    bar.close()
+    print("\n".join(summary_lines(job.title, result)))  # noqa: T201
+    return DONE
+
+
+def summary_lines(title: str, result: RunResult) -> list[str]:
+    """What a run found, for the terminal."""
+    found = result.totals
+    consumption, drawdown = found.consumption.sum(), found.drawdown.sum()
+    mapped, valid = found.rock_area.sum(), found.valid_area.sum()
+    lines = [
+        title,
+        f"  drawdown, long term      {drawdown:14,.0f} t CO2 per year",
+        f"  consumption, short term  {consumption:14,.0f} t CO2 per year",
+        f"  over {valid:,.0f} km2: {100 * valid / mapped if mapped else 0:.1f} % of the "
+        f"{mapped:,.0f} km2 of mapped rock had data",
+    ]
+    flagged = float(found.outside_range.sum())
+    if flagged:
+        lines.append(f"  {flagged:,.0f} km2 lie outside the range that their law was fitted in")
+    lines.extend(_top_regions(result))
+    lines.append(f"  {result.folder} ({result.seconds:.1f} s)")
+    lines.append("  A screening estimate, not verified removal.")
+    return lines
+
+
+def _top_regions(result: RunResult) -> list[str]:
+    found = result.totals
+    by_region = found.drawdown.sum(axis=1)
+    order = sorted(range(len(found.names) - 1), key=lambda at: -by_region[at])[:5]
+    if not order:
+        return []
+    width = max(len(found.names[at]) for at in order)
+    lines = ["  most drawdown, t CO2 per year:"]
+    lines += [f"    {found.names[at]:{width}}  {by_region[at]:14,.0f}" for at in order]
+    return lines
+
+
+def _inspect(chosen: argparse.Namespace) -> int:
+    from mapper.job import load_job  # noqa: PLC0415
+    from mapper.pipeline import inspect  # noqa: PLC0415
+
+    report = inspect(load_job(chosen.job))
+    print("\n".join(report.lines()))  # noqa: T201
+    return DONE
+
+
+def _laws(chosen: argparse.Namespace) -> int:
+    from mapper.exports.catalogue import law_lines, laws_lines  # noqa: PLC0415
+
+    lines = law_lines(chosen.name) if chosen.name else laws_lines()
+    print("\n".join(lines))  # noqa: T201
+    return DONE
+
+
+class ProgressBar:
+    """Progress on a terminal as one line that is overwritten, elsewhere as lines now and then.
+
+    Nothing is shown for work that ends within a second.
+    """
+
+    def __init__(self, stream: TextIO) -> None:
+        self.stream = stream
+        self.live = stream.isatty()
+        self.stage = ""
+        self.began = time.monotonic()
+        self.start_done = 0
+        self.last = self.began
+        self.shown = False
+
+    def update(self, stage: str, done: int, total: int) -> None:
+        """Say how far a stage has come."""
+        now = time.monotonic()
+        if stage != self.stage:
+            self.stage, self.began, self.start_done, self.last = stage, now, done, now
+        pause = 0.2 if self.live else 10.0
+        if now - self.began < 1.0 or (now - self.last < pause and done < total):
+            return
+        self.last = now
+        rate = (done - self.start_done) / max(now - self.began, 1e-9)
+        left = (total - done) / rate if rate else 0.0
+        share = done / total if total else 1.0
+        text = (
+            f"{stage:7} {100 * share:5.1f} %  {rate / 1e6:6.2f} million cells/s  "
+            f"{_clock(left)} left"
+        )
+        self._show(text, share)
+
+    def _show(self, text: str, share: float) -> None:
+        self.shown = True
+        if self.live:
+            filled = int(24 * share)
+            self.stream.write(f"\r[{'#' * filled}{'.' * (24 - filled)}] {text}\x1b[K")
+        else:
+            self.stream.write(text + "\n")
+        self.stream.flush()
+
+    def close(self) -> None:
+        """End the line that was overwritten."""
+        if self.shown and self.live:
+            self.stream.write("\r\x1b[K")
+            self.stream.flush()
+
+
+def _clock(seconds: float) -> str:
+    minutes, rest = divmod(int(seconds + 0.5), 60)
+    hours, minutes = divmod(minutes, 60)
+    return f"{hours}:{minutes:02d}:{rest:02d}" if hours else f"{minutes}:{rest:02d}"
+
+
+if __name__ == "__main__":
+    sys.exit(main())

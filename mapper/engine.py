@@ -1,0 +1,279 @@
+"""Evaluates laws: on one rock's cells, on a block of the grid, or on a lazy dataset."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from enum import IntFlag
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mapper.accounting import drawdown_share
+from mapper.grid import Grid, Window, cell_areas
+from mapper.hydrology import derive_runoff
+from mapper.layers.layer import Layer
+from mapper.layers.lithology import Lithology, RockCells
+from mapper.regions import RegionCells, Regions, region_cells
+from mapper.rocks import ROCK_NAMES, ROCKS
+from mapper.scheme import RockLaw, Scheme
+from mapper.sums import LIMBS, Counts, add_up, unit_exponent
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+Bits = NDArray[np.uint8]
+
+N_ROCKS = len(ROCK_NAMES)
+
+
+class Flag(IntFlag):
+    """What a reader should know about a cell, as bits of ``maps/flags.tif``."""
+
+    NO_DATA = 1
+    PARTLY_NO_DATA = 2
+    RUNOFF_OUTSIDE = 4
+    TEMPERATURE_OUTSIDE = 8
+    OTHER_OUTSIDE = 16
+    CAPPED = 32
+    NEGATIVE_RUNOFF = 64
+    NOT_FINITE = 128
+
+
+FLAG_MEANING: Mapping[Flag, str] = {
+    Flag.NO_DATA: "no result: lithology or a layer that the law reads has no data",
+    Flag.PARTLY_NO_DATA: "a part of the cell has no result",
+    Flag.RUNOFF_OUTSIDE: "runoff outside the range that the law was fitted in",
+    Flag.TEMPERATURE_OUTSIDE: "temperature outside the range that the law was fitted in",
+    Flag.OTHER_OUTSIDE: "another layer outside the range that the law was fitted in",
+    Flag.CAPPED: "held at the supply limit",
+    Flag.NEGATIVE_RUNOFF: "runoff below zero, taken as zero",
+    Flag.NOT_FINITE: "the law gave no finite number",
+}
+
+OUTSIDE_RANGE = Flag.RUNOFF_OUTSIDE | Flag.TEMPERATURE_OUTSIDE | Flag.OTHER_OUTSIDE
+
+
+@dataclass(frozen=True, eq=False)
+class Plan:
+    """All that a block needs to be evaluated, ready to be sent to another process."""
+
+    grid: Grid
+    lithology: Lithology
+    layers: Mapping[str, Layer]
+    water_method: str
+    scheme: Scheme
+    regions: Regions | None
+
+    @property
+    def n_regions(self) -> int:
+        """Number of regions, and one for 'outside'."""
+        return 1 if self.regions is None else self.regions.n_keys
+
+
+class BlockSums(NamedTuple):
+    """Exact sums of one block, or of several added together.
+
+    ``area`` [m2] by region; ``total`` of all cells, not split: area [m2], consumption and
+    drawdown [mol yr-1]. The others are by region and rock, shape (n_regions, n_rocks, LIMBS):
+    rock area, area with a result, consumption, and the area under each flag.
+    """
+
+    area: Counts
+    total: Counts
+    rock_area: Counts
+    valid_area: Counts
+    consumption: Counts
+    flagged: Counts
+
+    def plus(self, other: BlockSums) -> BlockSums:
+        """Both sums together."""
+        return BlockSums(*(one + two for one, two in zip(self, other, strict=True)))
+
+
+class BlockMaps(NamedTuple):
+    """A block of each map: rates over the whole cell [mol m-2 yr-1], NaN without a result."""
+
+    consumption: Floats
+    drawdown: Floats
+    flags: Bits
+
+
+class RockResult(NamedTuple):
+    """The rate of one rock's entries [mol m-2 yr-1], NaN without a result, and their flags."""
+
+    rate: Floats
+    flags: Bits
+
+
+def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResult:
+    """Evaluate a law on one rock's entries.
+
+    Parameters
+    ----------
+    law : None for a class that does not weather, whose rate is zero.
+    inputs : layers in inner units, each of shape (n,).
+
+    Notes
+    -----
+    Runoff below zero is taken as zero. Entries outside the law's ranges are computed and flagged.
+    """
+    n = next(iter(inputs.values())).size if inputs else 0
+    flags = np.zeros(n, dtype=np.uint8)
+    if law is None:
+        return RockResult(np.zeros(n), flags)
+    read: list[Floats] = []
+    known = np.ones(n, dtype=np.bool_)
+    for one in law.law.inputs:
+        values = inputs[one.name]
+        known &= ~np.isnan(values)
+        if one.name == "runoff" and (values < 0).any():
+            flags[values < 0] |= _bit(Flag.NEGATIVE_RUNOFF)
+            values = np.maximum(values, 0.0)
+        outside = (values < one.low) | (values > one.high)
+        flags[outside] |= _bit(_outside_flag(one.name))
+        read.append(values)
+    with np.errstate(all="ignore"):  # what is not finite is flagged below, cell by cell
+        rate = np.broadcast_to(law.law.function(*read, **law.values), (n,))
+    bad = known & ~np.isfinite(rate)
+    flags[bad] |= _bit(Flag.NOT_FINITE)
+    flags[~known] = 0
+    return RockResult(np.where(known & ~bad, rate, np.nan), flags)
+
+
+def _bit(flag: Flag) -> np.uint8:
+    return np.uint8(int(flag))
+
+
+def _outside_flag(name: str) -> Flag:
+    if name == "runoff":
+        return Flag.RUNOFF_OUTSIDE
+    return Flag.TEMPERATURE_OUTSIDE if name == "temperature" else Flag.OTHER_OUTSIDE
+
+
+def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
+    """The layers that the laws read, on a window, each of shape (n_cells,)."""
+    needed = plan.scheme.input_names()
+    inputs = {
+        name: plan.layers[name].values(window).ravel() for name in needed if name in plan.layers
+    }
+    if "runoff" in needed and "runoff" not in plan.layers:
+        water = plan.layers["precipitation"].values(window).ravel()
+        warmth = inputs.get("temperature")
+        if warmth is None:
+            warmth = plan.layers["temperature"].values(window).ravel()
+        inputs["runoff"] = derive_runoff(plan.water_method, water, warmth)
+    return inputs
+
+
+def evaluate_block(plan: Plan, window: Window) -> tuple[BlockMaps, BlockSums]:
+    """Read, align and evaluate one block: its part of each map, and its sums."""
+    rocks = plan.lithology.rock_cells(window)
+    inputs = read_inputs(plan, window)
+    rate, flags = _evaluate_entries(plan.scheme, rocks, inputs)
+    maps = _to_cells(rocks, rate, flags, window)
+    regions = region_cells(plan.regions, plan.grid, window)
+    areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
+    return maps, _sum_block(plan, rocks, RockResult(rate, flags), (regions, areas, maps))
+
+
+def _evaluate_entries(
+    scheme: Scheme, rocks: RockCells, inputs: Mapping[str, Floats]
+) -> tuple[Floats, Bits]:
+    rate = np.empty(rocks.cell.size)
+    flags = np.zeros(rocks.cell.size, dtype=np.uint8)
+    for rock, part in rock_slices(rocks):
+        cells = rocks.cell[part]
+        law = scheme.by_rock.get(rock)
+        names = law.law.input_names if law else ()
+        taken = {name: inputs[name][cells] for name in names}
+        if law is None:
+            rate[part] = 0.0
+        else:
+            rate[part], flags[part] = evaluate_rock(law, taken)
+    return rate, flags
+
+
+def rock_slices(rocks: RockCells) -> list[tuple[str, slice]]:
+    """The stretch of entries of each rock that occurs."""
+    edges = np.searchsorted(rocks.rock, np.arange(N_ROCKS + 1))
+    return [
+        (ROCK_NAMES[at], slice(int(edges[at]), int(edges[at + 1])))
+        for at in range(N_ROCKS)
+        if edges[at + 1] > edges[at]
+    ]
+
+
+KEPT = np.array([drawdown_share(ROCKS[name]) for name in ROCK_NAMES])
+"""Share of the short-term uptake that lasts, by rock [1]."""
+
+
+def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> BlockMaps:
+    """Weigh each cell's rocks by their shares; what has no result counts as no data."""
+    n = window.n_cells
+    consumption, drawdown, valid = np.zeros(n), np.zeros(n), np.zeros(n)
+    cell_flags = np.zeros(n, dtype=np.uint8)
+    for _, part in rock_slices(rocks):
+        cells, here = rocks.cell[part], rate[part]
+        good = ~np.isnan(here)
+        cells, share, taken = cells[good], rocks.share[part][good], here[good]
+        consumption[cells] += share * taken
+        drawdown[cells] += share * taken * KEPT[rocks.rock[part.start]]
+        valid[cells] += share
+        cell_flags[rocks.cell[part]] |= flags[part]
+    empty = valid <= 0.0
+    consumption[empty] = np.nan
+    drawdown[empty] = np.nan
+    cell_flags[empty] |= _bit(Flag.NO_DATA)
+    cell_flags[~empty & (valid < 1.0 - 1e-6)] |= _bit(Flag.PARTLY_NO_DATA)
+    shape = window.shape
+    return BlockMaps(consumption.reshape(shape), drawdown.reshape(shape), cell_flags.reshape(shape))
+
+
+def _sum_block(
+    plan: Plan,
+    rocks: RockCells,
+    result: RockResult,
+    ground: tuple[RegionCells, Floats, BlockMaps],
+) -> BlockSums:
+    regions, areas, maps = ground
+    exponent = unit_exponent(plan.grid)
+    n_regions = plan.n_regions
+    every = regions.split(np.arange(areas.size))
+    area = add_up(every.region, areas[every.entry] * every.part, n_regions, exponent)
+    pieces = regions.split(rocks.cell)
+    key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
+    held = areas[rocks.cell[pieces.entry]] * rocks.share[pieces.entry] * pieces.part
+    good = ~np.isnan(result.rate[pieces.entry])
+    taken = np.where(good, result.rate[pieces.entry], 0.0) * held
+    n_keys = n_regions * N_ROCKS
+    shape = (n_regions, N_ROCKS, LIMBS)
+    flags = result.flags[pieces.entry]
+    flagged = [_flagged(key, held, flags, flag, n_keys, exponent) for flag in Flag]
+    return BlockSums(
+        area=area,
+        total=_sum_cells(maps, areas, exponent),
+        rock_area=add_up(key, held, n_keys, exponent).reshape(shape),
+        valid_area=add_up(key[good], held[good], n_keys, exponent).reshape(shape),
+        consumption=add_up(key, taken, n_keys, exponent).reshape(shape),
+        flagged=np.stack(flagged).reshape(len(flagged), *shape),
+    )
+
+
+def _flagged(
+    key: Ints, held: Floats, flags: Bits, flag: Flag, n_keys: int, exponent: int
+) -> Counts:
+    here = (flags & _bit(flag)) != 0
+    if not here.any():
+        return np.zeros((n_keys, LIMBS), dtype=np.int64)
+    return add_up(key[here], held[here], n_keys, exponent)
+
+
+def _sum_cells(maps: BlockMaps, areas: Floats, exponent: int) -> Counts:
+    """Area, consumption and drawdown of all cells, without regions or rocks: the check sum."""
+    one_key = np.zeros(areas.size, dtype=np.int64)
+    rows = [areas]
+    for values in (maps.consumption, maps.drawdown):
+        flat = values.ravel()
+        rows.append(np.where(np.isnan(flat), 0.0, flat) * areas)
+    return np.concatenate([add_up(one_key, row, 1, exponent) for row in rows])

@@ -1,0 +1,1 @@
+"""What a run hands over: maps, tables and the record."""

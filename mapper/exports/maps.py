@@ -1,0 +1,149 @@
+"""Maps as Cloud Optimized GeoTIFFs, put together without holding them in memory."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import rasterio
+from numpy.typing import NDArray
+from rasterio.shutil import copy as copy_raster
+from rasterio.windows import Window as RasterWindow
+
+from mapper.engine import FLAG_MEANING
+from mapper.exports.files import whole_file
+from mapper.grid import Grid, Window
+
+RATE_UNIT = "t CO2 km-2 yr-1"
+COG_BLOCK = 512
+
+
+@dataclass(frozen=True, kw_only=True)
+class MapKind:
+    """One map of a run: its file, what its values mean, and how its overviews are made."""
+
+    name: str
+    dtype: str
+    nodata: float | None
+    unit: str
+    description: str
+    overviews: str
+    tags: Mapping[str, str]
+
+
+_CAUTION = "a screening estimate, not verified removal; local rules and qualified judgement decide"
+
+MAPS: tuple[MapKind, ...] = (
+    MapKind(
+        name="consumption",
+        dtype="float32",
+        nodata=float("nan"),
+        unit=RATE_UNIT,
+        description="CO2 taken up by weathering, short term",
+        overviews="AVERAGE",
+        tags={
+            "standard_name": "",
+            "long_name": "CO2 taken from air and soil by rock weathering, short term, over the "
+            "whole cell",
+            "caution": _CAUTION,
+        },
+    ),
+    MapKind(
+        name="drawdown",
+        dtype="float32",
+        nodata=float("nan"),
+        unit=RATE_UNIT,
+        description="CO2 drawn down by weathering, long term",
+        overviews="AVERAGE",
+        tags={
+            "long_name": "CO2 that stays out of the atmosphere after carbonate has formed in the "
+            "sea, long term, over the whole cell",
+            "caution": _CAUTION,
+        },
+    ),
+    MapKind(
+        name="flags",
+        dtype="uint8",
+        nodata=None,
+        unit="bits",
+        description="what to know about a cell, as bits",
+        overviews="NEAREST",
+        tags={f"bit_{int(flag)}": meaning for flag, meaning in FLAG_MEANING.items()},
+    ),
+)
+
+
+def write_map(
+    folder: Path,
+    kind: MapKind,
+    grid: Grid,
+    pieces: Iterable[tuple[Window, NDArray[Any]]],
+    *,
+    threads: int,
+    step: Callable[[int], None],
+) -> Path:
+    """Write one map as COG.
+
+    Parameters
+    ----------
+    pieces : windows and their values, which together fill the grid.
+    step : told the number of cells after each piece.
+    """
+    final = folder / f"{kind.name}.tif"
+    plain = folder / f".part-plain-{kind.name}.tif"
+    try:
+        with whole_file(plain) as temporary:
+            _write_plain(temporary, kind, grid, pieces, step)
+        with whole_file(final) as temporary:
+            copy_raster(plain, temporary, **_cog_options(kind, threads))
+    finally:
+        plain.unlink(missing_ok=True)
+    return final
+
+
+def _write_plain(
+    path: Path,
+    kind: MapKind,
+    grid: Grid,
+    pieces: Iterable[tuple[Window, NDArray[Any]]],
+    step: Callable[[int], None],
+) -> None:
+    profile: dict[str, Any] = {
+        "driver": "GTiff",
+        "width": grid.n_cols,
+        "height": grid.n_rows,
+        "count": 1,
+        "dtype": kind.dtype,
+        "crs": rasterio.CRS.from_wkt(grid.crs),
+        "transform": rasterio.Affine(*grid.transform),
+        "nodata": kind.nodata,
+        "bigtiff": "IF_SAFER",
+        "tiled": True,
+        "blockxsize": COG_BLOCK,
+        "blockysize": COG_BLOCK,
+    }
+    with rasterio.open(path, "w", **profile) as dataset:
+        dataset.set_band_description(1, kind.description)
+        dataset.units = (kind.unit,)
+        dataset.update_tags(**{key: text for key, text in kind.tags.items() if text})
+        dataset.update_tags(1, units=kind.unit)
+        for window, values in pieces:
+            at = RasterWindow(window.col, window.row, window.n_cols, window.n_rows)
+            dataset.write(values, 1, window=at)
+            step(window.n_cells)
+
+
+def _cog_options(kind: MapKind, threads: int) -> dict[str, Any]:
+    return {
+        "driver": "COG",
+        "compress": "DEFLATE",
+        "predictor": "YES",
+        "level": 6,
+        "blocksize": COG_BLOCK,
+        "overview_resampling": kind.overviews,
+        "num_threads": threads,
+        "bigtiff": "IF_SAFER",
+        "statistics": "YES" if kind.nodata is not None else "NO",
+    }

@@ -1,0 +1,136 @@
+"""The record of a run: with it somebody else can get the same numbers."""
+
+from __future__ import annotations
+
+import hashlib
+import importlib.metadata
+import platform
+from collections.abc import Mapping
+from dataclasses import asdict
+from pathlib import Path
+from typing import Any
+
+from mapper.accounting import DAYS_PER_YEAR, MOLAR_MASS
+from mapper.engine import Plan
+from mapper.grid import parse_crs
+from mapper.job import Job
+from mapper.layers.layer import QUANTITY, Layer
+from mapper.scheme import RockLaw
+from mapper.units import INNER_UNIT
+
+_LIBRARIES = ("numpy", "scipy", "xarray", "rioxarray", "rasterio", "pyproj", "shapely", "dask")
+
+CAUTIONS = (
+    "Screening estimates from published rate laws and gridded inputs; not verified removal.",
+    "Consumption is short term; drawdown is long term. The two must not be mixed or added.",
+    "Local rules and qualified judgement decide what a number may be used for.",
+)
+
+_CHUNK = 2**22
+
+
+def file_hash(path: str) -> str:
+    """SHA-256 of a file's bytes."""
+    digest = hashlib.sha256()
+    with Path(path).open("rb") as stream:
+        while chunk := stream.read(_CHUNK):
+            digest.update(chunk)
+    return digest.hexdigest()
+
+
+def input_files(job: Job) -> list[str]:
+    """Every file that a job reads, once, in the order of the job."""
+    paths = [path for spec in job.layers.values() for path in (spec.path, spec.legend) if path]
+    if job.regions is not None:
+        paths.append(job.regions.path)
+    return list(dict.fromkeys(paths))
+
+
+def describe_inputs(job: Job) -> list[dict[str, Any]]:
+    """Name, size and hash of every input."""
+    return [
+        {"name": Path(path).name, "bytes": Path(path).stat().st_size, "sha256": file_hash(path)}
+        for path in input_files(job)
+    ]
+
+
+def describe_job(job: Job) -> dict[str, Any]:
+    """The job as resolved, paths reduced to names so that the record travels."""
+    described = asdict(job)
+    described["path"] = Path(job.path).name
+    described["folder"] = Path(job.folder).name
+    for spec in described["layers"].values():
+        for key in ("path", "legend"):
+            spec[key] = Path(spec[key]).name if spec[key] else None
+    if described["regions"]:
+        described["regions"]["path"] = Path(described["regions"]["path"]).name
+    return described
+
+
+def describe_plan(plan: Plan) -> dict[str, Any]:
+    """Grid, layers and laws as they were used."""
+    grid = plan.grid
+    lithology = plan.lithology
+    return {
+        "grid": {
+            "crs": parse_crs(grid.crs).to_string()[:200],
+            "crs_name": parse_crs(grid.crs).name,
+            "transform": list(grid.transform),
+            "rows": grid.n_rows,
+            "columns": grid.n_cols,
+        },
+        "layers": {
+            "lithology": {"how": "polygons" if lithology.polygons else lithology.how},
+            **{name: _describe_layer(layer) for name, layer in plan.layers.items()},
+        },
+        "water_method": plan.water_method if "runoff" not in plan.layers else "runoff given",
+        "laws": {rock: _describe_law(one) for rock, one in plan.scheme.by_rock.items()},
+        "regions": None
+        if plan.regions is None
+        else {"count": len(plan.regions.names), "notes": list(plan.regions.notes)},
+    }
+
+
+def _describe_layer(layer: Layer) -> dict[str, Any]:
+    return {
+        "how": layer.how,
+        "unit_read_as": layer.conversion.unit,
+        "unit_from": "job" if layer.spec.units else "file",
+        "inner_unit": INNER_UNIT[QUANTITY[layer.name]],
+        "scale": layer.source.scale,
+        "offset": layer.source.offset,
+        "nodata": [repr(one) for one in layer.source.nodata],
+        "notes": list(layer.source.notes),
+    }
+
+
+def _describe_law(one: RockLaw) -> dict[str, Any]:
+    return {
+        "law": one.law.name,
+        "reference": one.law.reference,
+        "modified": bool(one.changed),
+        "changed": list(one.changed),
+        "parameters": {
+            parameter.name: {
+                "value": one.values[parameter.name],
+                "unit": parameter.unit,
+                "source": parameter.source,
+                "grade": parameter.grade,
+            }
+            for parameter in one.law.parameters
+        },
+    }
+
+
+def versions() -> dict[str, str]:
+    """Versions of this tool, of Python and of the libraries that numbers pass through."""
+    found = {
+        "saprolite": importlib.metadata.version("saprolite"),
+        "python": platform.python_version(),
+    }
+    return found | {name: importlib.metadata.version(name) for name in _LIBRARIES}
+
+
+def constants() -> Mapping[str, Any]:
+    """Constants that every number rests on."""
+    return {"days_per_year": DAYS_PER_YEAR, "molar_mass_g_per_mol": dict(MOLAR_MASS)}

@@ -1,0 +1,293 @@
+"""A layer on the job's grid: opened, decoded once, resampled, checked for sense."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Any, Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mapper.errors import GridError, ValuesError
+from mapper.grid import Grid, Window, parse_crs, same_crs, transformer
+from mapper.job import LayerSpec
+from mapper.layers.axis import SAME_TOLERANCE, Axis, AxisPlan, Method, nearest_turn, plan_axis
+from mapper.layers.resample import resample
+from mapper.layers.source import Source, file_kind
+from mapper.layers.warp import plan_points, sample_bilinear, sample_nearest, subdivisions
+from mapper.units import INNER_UNIT, Conversion, Quantity, conversion
+from mapper.vegetation import cover_from_ndvi
+
+Floats = NDArray[np.float64]
+How = Literal["same", "nearest", "bilinear", "mean", "points"]
+
+QUANTITY: dict[str, Quantity] = {
+    "temperature": "temperature",
+    "runoff": "water",
+    "precipitation": "water",
+    "evapotranspiration": "water",
+    "vegetation": "fraction",
+    "soil_shielding": "fraction",
+    "erosion": "erosion",
+    "soil_co2": "pressure",
+    "reference_consumption": "rate",
+}
+
+PLAUSIBLE: dict[str, tuple[float, float]] = {
+    # inner units; common practice, no source: wide enough for any place on the earth
+    "temperature": (180.0, 335.0),
+    "runoff": (-500.0, 20_000.0),
+    "precipitation": (0.0, 20_000.0),
+    "evapotranspiration": (0.0, 6_000.0),
+    "vegetation": (-1e-6, 1.0 + 1e-6),
+    "soil_shielding": (-1e-6, 1.0 + 1e-6),
+    "erosion": (0.0, 1e6),
+    "soil_co2": (0.0, 1.0),
+    "reference_consumption": (0.0, 100.0),
+}
+
+
+@dataclass(frozen=True, eq=False)
+class Layer:
+    """One continuous layer brought onto the grid.
+
+    ``how`` is "same" where the source's cells are the grid's own, offset by whole cells;
+    "points" where its CRS is another one and cells are sampled.
+    """
+
+    spec: LayerSpec
+    source: Source
+    grid: Grid
+    how: How
+    conversion: Conversion
+    points: int = 1
+
+    @property
+    def name(self) -> str:
+        """The layer's name in the job."""
+        return self.spec.name
+
+    def values(self, window: Window) -> Floats:
+        """Values of a window in inner units, NaN where there is no data.
+
+        Raises
+        ------
+        ValuesError where values cannot be what the layer says they are.
+        """
+        if self.how == "points":
+            return self._sampled(window)
+        rows, cols = axis_plans(self.source, self.grid, window, _method(self.how))
+        raw, valid = self.source.read(rows, cols)
+        values = self.decode(raw, valid)
+        if self.how == "same":
+            whole = np.full(window.shape, np.nan)
+            inside = np.ix_(rows.nearest >= 0, cols.nearest >= 0)
+            index = np.ix_(rows.nearest[rows.nearest >= 0], cols.nearest[cols.nearest >= 0])
+            whole[inside] = np.where(valid[index], values[index], np.nan)
+            return whole
+        return resample(rows, cols, values, valid, _method(self.how))
+
+    def decode(self, raw: NDArray[Any], valid: NDArray[np.bool_]) -> Floats:
+        """Raw values in inner units; what is not valid is left as it falls."""
+        values = raw.astype(np.float64)
+        if (self.source.scale, self.source.offset) != (1.0, 0.0):
+            values = values * self.source.scale + self.source.offset
+        if (self.conversion.factor, self.conversion.offset) != (1.0, 0.0):
+            values = values * self.conversion.factor + self.conversion.offset
+        if self.name == "vegetation" and self.spec.kind != "cover":
+            _check_plausible(self, values, valid, (-1.0 - 1e-6, 1.0 + 1e-6), "NDVI")
+            squared = self.spec.kind == "ndvi-squared"
+            values = cover_from_ndvi(
+                values, bare=self.spec.bare, dense=self.spec.dense, squared=squared
+            )
+        _check_plausible(self, values, valid, PLAUSIBLE[self.name], self.name)
+        return values
+
+    def _sampled(self, window: Window) -> Floats:
+        plan = plan_points(self.grid, window, self.source, self.points)
+        if plan is None:
+            return np.full(window.shape, np.nan)
+        raw, valid = self.source.read(plan.rows, plan.cols)
+        values = self.decode(raw, valid)
+        if self.points > 1 or self.spec.resampling == "nearest":
+            return sample_nearest(plan, values, valid)
+        return sample_bilinear(plan, self.source, values, valid)
+
+
+def _method(how: How) -> Method:
+    return "nearest" if how in ("same", "points") else how  # type: ignore[return-value]
+
+
+def _check_plausible(
+    layer: Layer,
+    values: Floats,
+    valid: NDArray[np.bool_],
+    band: tuple[float, float],
+    what: str,
+) -> None:
+    wrong = valid & ((values < band[0]) | (values > band[1]))
+    count = int(wrong.sum())
+    if not count:
+        return
+    unit = INNER_UNIT[QUANTITY[layer.name]]
+    median = float(np.median(values[valid]))
+    worst = float(values[wrong][0])
+    n_valid = int(valid.sum())
+    if count < 0.5 * n_valid:
+        raw_worst = _raw(layer, worst)
+        fix = f"nodata = {raw_worst:g} if that value means no data; else mend the file or its units"
+    else:
+        fix = f'units = "..." as the values really are; read as {layer.conversion.unit!r} now'
+    raise ValuesError(
+        f"{count} of {n_valid} values cannot be {what}: for example {worst:g} {unit} "
+        f"(median {median:g} {unit}; {band[0]:g} to {band[1]:g} is possible)",
+        where=layer.spec.where,
+        fix=fix,
+    )
+
+
+def _raw(layer: Layer, value: float) -> float:
+    raw = (value - layer.conversion.offset) / layer.conversion.factor
+    return (raw - layer.source.offset) / layer.source.scale
+
+
+def open_source(spec: LayerSpec) -> Source:
+    """Open a gridded file by what its first bytes say it is."""
+    kind = file_kind(spec.path, where=spec.where)
+    if kind == "geotiff":
+        from mapper.layers.geotiff import open_geotiff  # noqa: PLC0415 - heavy import
+
+        return open_geotiff(spec)
+    if kind == "netcdf":
+        from mapper.layers.netcdf import open_netcdf  # noqa: PLC0415 - heavy import
+
+        return open_netcdf(spec)
+    raise ValuesError(
+        "the file holds vectors, and a grid is needed",
+        where=spec.where,
+        fix="a GeoTIFF or NetCDF file",
+    )
+
+
+def source_grid(source: Source, *, where: str) -> Grid:
+    """The source's own cells as a grid.
+
+    Raises GridError where the cells are not all of one size.
+    """
+    if not (source.x.is_regular and source.y.is_regular):
+        raise GridError(
+            "cells are not all of one size, so they cannot be the job's grid",
+            where=where,
+            fix="[grid] with crs, resolution and bounds",
+        )
+    dx = float(source.x.edges[-1] - source.x.edges[0]) / source.x.size
+    dy = float(source.y.edges[-1] - source.y.edges[0]) / source.y.size
+    return Grid(
+        crs=source.crs,
+        left=float(source.x.edges[0]),
+        top=-float(source.y.edges[0]),
+        dx=dx,
+        dy=dy,
+        n_rows=source.y.size,
+        n_cols=source.x.size,
+    )
+
+
+def place(source: Source, grid: Grid, *, where: str) -> Source:
+    """Turn a longitude axis to where the grid lies, and refuse a source that misses it.
+
+    Raises GridError where the two do not overlap.
+    """
+    if same_crs(source.crs, grid.crs):
+        left, bottom, right, top = grid.bounds
+        if grid.is_geographic:
+            source = replace(source, x=nearest_turn(source.x, left, right))
+        apart = not source.x.period and (source.x.edges[-1] <= left or source.x.edges[0] >= right)
+        if apart or source.y.edges[-1] <= -top or source.y.edges[0] >= -bottom:
+            raise _misses(source, grid, where)
+        return source
+    window = Window(0, 0, grid.n_rows, grid.n_cols)
+    x, y = _rim(grid, window)
+    source_x, source_y = transformer(grid.crs, source.crs).transform(x, y)
+    good = np.isfinite(source_x) & np.isfinite(source_y)
+    if not good.any():
+        raise _misses(source, grid, where)
+    if parse_crs(source.crs).is_geographic:
+        source = replace(
+            source, x=nearest_turn(source.x, source_x[good].min(), source_x[good].max())
+        )
+    return source
+
+
+def _rim(grid: Grid, window: Window) -> tuple[Floats, Floats]:
+    left, bottom, right, top = grid.window_bounds(window)
+    x, y = np.meshgrid(np.linspace(left, right, 21), np.linspace(bottom, top, 21))
+    return x.ravel(), y.ravel()
+
+
+def _misses(source: Source, grid: Grid, where: str) -> GridError:
+    left, bottom, right, top = grid.bounds
+    x0, x1 = source.x.edges[0], source.x.edges[-1]
+    y0, y1 = -source.y.edges[-1], -source.y.edges[0]
+    return GridError(
+        f"the layer lies apart from the grid: x {x0:g}..{x1:g}, y {y0:g}..{y1:g} against "
+        f"x {left:g}..{right:g}, y {bottom:g}..{top:g}",
+        where=where,
+        fix="a file that covers the grid, or the right crs for it",
+    )
+
+
+def how_aligned(source: Source, grid: Grid, resampling: str) -> How:
+    """Choose how a source comes onto the grid; ``resampling`` other than "auto" decides."""
+    if not same_crs(source.crs, grid.crs):
+        return "points"
+    if _same_cells(source.x, grid.left, grid.dx) and _same_cells(source.y, -grid.top, grid.dy):
+        return "same"
+    if resampling != "auto":
+        return resampling  # type: ignore[return-value]
+    finer = source.x.step < 0.999 * grid.dx or source.y.step < 0.999 * grid.dy
+    return "mean" if finer else "bilinear"
+
+
+def _same_cells(axis: Axis, start: float, step: float) -> bool:
+    if not axis.is_regular or abs(axis.step - step) * axis.size > SAME_TOLERANCE * step:
+        return False
+    offset = (start - axis.edges[0]) / step
+    return bool(abs(offset - round(offset)) <= SAME_TOLERANCE)
+
+
+def axis_plans(
+    source: Source, grid: Grid, window: Window, method: Method
+) -> tuple[AxisPlan, AxisPlan]:
+    """Row and column plans of a window for a source in the grid's CRS."""
+    row_edges = -grid.y_edges(window.row, window.row_stop)
+    row_centres = -grid.y_centres(window.row, window.row_stop)
+    col_edges = grid.x_edges(window.col, window.col_stop)
+    col_centres = grid.x_centres(window.col, window.col_stop)
+    sphere = grid.is_geographic
+    rows = plan_axis(source.y, row_edges, row_centres, method, sphere=sphere)
+    cols = plan_axis(source.x, col_edges, col_centres, method, sphere=False)
+    return rows, cols
+
+
+def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
+    """Bring an opened source onto the grid.
+
+    Raises
+    ------
+    UnitError, GridError.
+    """
+    source = place(source, grid, where=spec.where)
+    how = how_aligned(source, grid, spec.resampling)
+    unit = spec.units if spec.units is not None else source.unit
+    if spec.name == "vegetation" and spec.kind != "cover" and unit is None:
+        unit = "1"
+    where = f"{spec.where}, units"
+    return Layer(
+        spec=spec,
+        source=source,
+        grid=grid,
+        how=how,
+        conversion=conversion(unit, QUANTITY[spec.name], where=where),
+        points=subdivisions(grid, source) if how == "points" else 1,
+    )

@@ -1,0 +1,173 @@
+"""Lithology on the job's grid: which rocks each cell holds, and what share of it each takes."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mapper.coverage import Polygons, cover_window
+from mapper.errors import LegendError
+from mapper.grid import Grid, Window
+from mapper.job import LayerSpec
+from mapper.layers.layer import How, axis_plans
+from mapper.layers.resample import LEAST_SHARE, class_shares
+from mapper.layers.source import Source
+from mapper.layers.warp import plan_points
+from mapper.legend import Legend, normal_code
+from mapper.rocks import ROCK_NAMES
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+UNKNOWN = -1
+
+
+class RockCells(NamedTuple):
+    """Cells by rock: three arrays of one length, ordered by rock and then by cell.
+
+    ``cell`` counts along the rows of a window, ``rock`` is a position in `ROCK_NAMES`, ``share``
+    the part of the cell [1]. The shares of a cell add up to the part that is mapped.
+    """
+
+    cell: Ints
+    rock: Ints
+    share: Floats
+
+
+@dataclass(frozen=True, eq=False)
+class Lithology:
+    """The geological map on the grid, from a raster of codes or from polygons."""
+
+    spec: LayerSpec
+    legend: Legend
+    grid: Grid
+    how: How
+    source: Source | None = None
+    points: int = 1
+    polygons: Polygons | None = None
+
+    def rock_cells(self, window: Window) -> RockCells:
+        """The rocks of a window.
+
+        Raises
+        ------
+        LegendError where a code is not in the legend and the job does not say what to do.
+        """
+        cells, codes, shares, names = self._coded(window)
+        return _to_rocks(cells, codes, shares, self._mixtures(names, codes, window))
+
+    def codes_in(self, window: Window) -> Mapping[str, float]:
+        """Each code or name in a window, and how many cells it fills."""
+        _, codes, shares, names = self._coded(window)
+        cells = np.bincount(codes, weights=shares, minlength=len(names))
+        return {name: float(count) for name, count in zip(names, cells, strict=True) if count > 0}
+
+    def _coded(self, window: Window) -> tuple[Ints, Ints, Floats, tuple[str, ...]]:
+        """Cells, position of the code in the names, share; and the names."""
+        if self.polygons is not None:
+            cover = cover_window(self.polygons, self.grid, window)
+            return *cover.entries(), self.polygons.names
+        if self.source is None:  # pragma: no cover - one of the two is always there
+            raise AssertionError
+        cells, codes, shares = self._from_raster(self.source, window)
+        values, index = np.unique(codes, return_inverse=True)
+        return cells, index.astype(np.int64), shares, tuple(str(int(one)) for one in values)
+
+    def _from_raster(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
+        if self.how == "points":
+            return self._from_points(source, window)
+        rows, cols = axis_plans(source, self.grid, window, "mean")
+        raw, valid = source.read(rows, cols)
+        if self.how != "same":
+            return class_shares(rows, cols, raw.astype(np.int64), valid)
+        inside = np.ix_(rows.nearest >= 0, cols.nearest >= 0)
+        index = np.ix_(rows.nearest[rows.nearest >= 0], cols.nearest[cols.nearest >= 0])
+        codes = np.zeros(window.shape, dtype=np.int64)
+        good = np.zeros(window.shape, dtype=np.bool_)
+        codes[inside], good[inside] = raw[index], valid[index]
+        cells = np.flatnonzero(good)
+        return cells, codes.ravel()[cells], np.ones(cells.size)
+
+    def _from_points(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
+        none = np.empty(0, dtype=np.int64)
+        plan = plan_points(self.grid, window, source, self.points)
+        if plan is None:
+            return none, none.copy(), np.empty(0)
+        raw, valid = source.read(plan.rows, plan.cols)
+        row, col = np.maximum(plan.row, 0), np.maximum(plan.col, 0)
+        good = (plan.row >= 0) & valid[row, col]
+        at_row, at_col = np.nonzero(good)
+        cells = at_row // self.points * window.n_cols + at_col // self.points
+        codes = raw[row, col][good].astype(np.int64)
+        pairs = np.stack([codes, cells], axis=1)
+        unique, count = np.unique(pairs, axis=0, return_counts=True)
+        return unique[:, 1], unique[:, 0], count / self.points**2
+
+    def _mixtures(
+        self, names: tuple[str, ...], codes: Ints, window: Window
+    ) -> list[list[tuple[int, float]]]:
+        known = [self.legend.mixtures.get(normal_code(name)) for name in names]
+        present = np.bincount(codes, minlength=len(names))
+        missing = [
+            f"{name} ({present[at]} cells)"
+            for at, name in enumerate(names)
+            if known[at] is None and present[at]
+        ]
+        if missing and self.spec.unknown == "error":
+            raise unknown_codes(missing, self.spec, self.legend, window)
+        return [
+            [(ROCK_NAMES.index(rock), share) for rock, share in mixture or ()] for mixture in known
+        ]
+
+
+def unknown_codes(
+    missing: list[str], spec: LayerSpec, legend: Legend, window: Window | None = None
+) -> LegendError:
+    """The error for codes that the legend does not hold."""
+    place = "" if window is None else f", rows {window.row}..{window.row_stop}"
+    return LegendError(
+        f"the legend has no line for code {', '.join(missing)}",
+        where=f"{spec.where}{place}; legend {legend.path}",
+        fix='a line code,rock for each, or unknown = "nodata" under [layers.lithology]',
+    )
+
+
+def _to_rocks(
+    cells: Ints, codes: Ints, shares: Floats, mixtures: list[list[tuple[int, float]]]
+) -> RockCells:
+    """Replace codes by rocks, add up a cell's shares of one rock, order by rock and cell."""
+    parts: list[tuple[Ints, Ints, Floats]] = []
+    simple = all(len(mixture) == 1 and mixture[0][1] == 1.0 for mixture in mixtures)
+    if simple:
+        rock = np.array([mixture[0][0] for mixture in mixtures], dtype=np.int64)[codes]
+        parts.append((cells, rock, shares))
+    else:
+        for position, mixture in enumerate(mixtures):
+            here = np.flatnonzero(codes == position)
+            for rock_index, part in mixture:
+                filled = np.full(here.size, rock_index, dtype=np.int64)
+                parts.append((cells[here], filled, shares[here] * part))
+    if not parts or not sum(part[0].size for part in parts):
+        none = np.empty(0, dtype=np.int64)
+        return RockCells(none, none.copy(), np.empty(0))
+    cell = np.concatenate([part[0] for part in parts])
+    rock = np.concatenate([part[1] for part in parts])
+    share = np.concatenate([part[2] for part in parts])
+    return _ordered(cell, rock, share)
+
+
+def _ordered(cell: Ints, rock: Ints, share: Floats) -> RockCells:
+    if (np.diff(cell) > 0).all():  # one rock a cell, in order: a stable sort by rock is enough
+        order = np.argsort(rock.astype(np.uint8), kind="stable")
+        return RockCells(cell[order], rock[order], share[order])
+    key = rock * (int(cell.max()) + 1) + cell
+    order = np.argsort(key, kind="stable")
+    key, cell, rock, share = key[order], cell[order], rock[order], share[order]
+    first = np.flatnonzero(np.concatenate([[True], np.diff(key) > 0]))
+    summed = np.add.reduceat(share, first)
+    keep = summed > LEAST_SHARE
+    return RockCells(cell[first][keep], rock[first][keep], summed[keep])

@@ -1,0 +1,109 @@
+"""Polygons from vector files: read, repaired and brought to the grid's CRS."""
+
+from __future__ import annotations
+
+import difflib
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+import pyogrio
+import shapely
+from numpy.typing import NDArray
+from pyogrio.errors import DataLayerError, DataSourceError
+
+from mapper.errors import FileFormatError, GridError, RegionError
+from mapper.grid import parse_crs, transformer
+from mapper.layers.source import file_kind
+
+SEGMENTS_PER_SPAN = 500
+"""Edges are divided into pieces of at most this part of the whole span before they are moved to
+another CRS: moving the corners alone bends no edge."""
+
+
+@dataclass(frozen=True, eq=False)
+class Features:
+    """Shapes, the values of one column, and their CRS."""
+
+    shapes: NDArray[Any]
+    values: tuple[Any, ...]
+    crs: str
+
+
+def read_vector(
+    path: str, *, layer: str | None, column: str, crs: str | None, where: str, key: str
+) -> Features:
+    """Read polygons and one column of their attributes.
+
+    Raises
+    ------
+    MissingFileError, FileFormatError, RegionError for features that are not polygons, GridError
+    where the CRS is missing.
+    """
+    if file_kind(path, where=where) != "vector" and not path.lower().endswith(".shp"):
+        raise FileFormatError(
+            "the file holds no vectors", where=where, fix="a GeoPackage, GeoJSON, Shapefile ..."
+        )
+    try:
+        frame = pyogrio.read_dataframe(path, layer=layer)
+    except (DataSourceError, DataLayerError) as cause:
+        raise FileFormatError(
+            f"the file cannot be read as vectors: {cause}", where=where, fix="copy it again"
+        ) from cause
+    if column not in frame.columns:
+        known = [str(one) for one in frame.columns if one != "geometry"]
+        near = difflib.get_close_matches(column, known, n=1, cutoff=0.0)
+        raise RegionError(
+            f"there is no column {column!r}; there are: {', '.join(known)}",
+            where=where,
+            fix=f'"{near[0]}"' if near else "a file with attributes",
+        )
+    found = crs or (frame.crs.to_wkt() if frame.crs is not None else None)
+    if found is None:
+        raise GridError(
+            "the file does not say its CRS", where=where, fix=f'crs = "EPSG:4326" under [{key}]'
+        )
+    shapes = np.asarray(frame.geometry.array)
+    _refuse_lines(shapes, where)
+    return Features(shapes, tuple(frame[column]), parse_crs(found).to_wkt())
+
+
+def _refuse_lines(shapes: NDArray[Any], where: str) -> None:
+    kinds = shapely.get_type_id(shapes)
+    wrong = [n for n, kind in enumerate(kinds, start=1) if kind not in (-1, 3, 6, 7)]
+    if wrong:
+        raise RegionError(
+            f"feature {wrong[0]} is a {shapes[wrong[0] - 1].geom_type}, and a polygon is needed",
+            where=where,
+            fix="polygons only",
+        )
+
+
+def valid_shapes(shapes: NDArray[Any], names: tuple[str, ...]) -> tuple[NDArray[Any], list[str]]:
+    """Repair shapes that cross themselves, and say by how much their area changed."""
+    notes: list[str] = []
+    fixed = shapes.copy()
+    for at in np.flatnonzero(shapely.is_missing(shapes) | shapely.is_empty(shapes)):
+        fixed[at] = shapely.Polygon()
+        notes.append(f"{names[at]!r} has no geometry: its area is 0")
+    for at in np.flatnonzero(~shapely.is_valid(fixed)):
+        repaired = shapely.make_valid(fixed[at], method="structure")
+        change = shapely.area(repaired) - shapely.area(fixed[at])
+        notes.append(
+            f"{names[at]!r} crossed itself: repaired, area changed by {change:g} CRS units2"
+        )
+        fixed[at] = repaired
+    return fixed, notes
+
+
+def reproject(shapes: NDArray[Any], source: str, target: str) -> NDArray[Any]:
+    """Bring shapes to another CRS, with their edges divided finely first."""
+    bounds = shapely.total_bounds(shapes)
+    step = max(bounds[2] - bounds[0], bounds[3] - bounds[1]) / SEGMENTS_PER_SPAN
+    dense = shapely.segmentize(shapes, step) if np.isfinite(step) and step > 0 else shapes
+    move = transformer(source, target)
+
+    def moved(points: NDArray[np.float64]) -> NDArray[np.float64]:
+        return np.stack(move.transform(points[:, 0], points[:, 1]), axis=1)
+
+    return np.asarray(shapely.transform(dense, moved))

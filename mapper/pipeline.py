@@ -1,0 +1,410 @@
+"""Puts the steps of a run together; the only place that computes."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+import resource
+import time
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import dask
+import numpy as np
+from dask.callbacks import Callback
+from numpy.typing import NDArray
+
+from mapper.accounting import to_rate
+from mapper.engine import BlockSums, Plan, evaluate_block
+from mapper.errors import RunFolderError
+from mapper.exports.files import write_csv, write_json
+from mapper.exports.maps import MAPS, MapKind, write_map
+from mapper.exports.record import (
+    CAUTIONS,
+    constants,
+    describe_inputs,
+    describe_job,
+    describe_plan,
+    input_files,
+    versions,
+)
+from mapper.exports.tables import (
+    REGION_COLUMNS,
+    ROCK_COLUMNS,
+    Totals,
+    closure,
+    region_rows,
+    rock_rows,
+    to_totals,
+)
+from mapper.grid import Window, blocks, parse_crs
+from mapper.job import Job
+from mapper.journal import Journal, open_journal
+from mapper.layers.layer import QUANTITY, Layer
+from mapper.planning import Sample, block_shape, make_plan, sample_layer
+from mapper.sums import unit_exponent
+from mapper.units import INNER_UNIT
+
+CLOSURE_LIMIT = 1e-12
+
+Progress = Callable[[str, int, int], None]
+"""Told the stage, the cells done and the cells in all."""
+
+
+@dataclass(frozen=True)
+class RunResult:
+    """What a run left: its folder, its totals, and what it found out about itself."""
+
+    folder: Path
+    totals: Totals
+    checks: Mapping[str, float]
+    seconds: float
+    resumed_blocks: int
+
+
+def _silent(stage: str, done: int, total: int) -> None:
+    """Report no progress."""
+
+
+def run(
+    job: Job,
+    *,
+    out: str | Path | None = None,
+    fresh: bool = False,
+    threads: int | None = None,
+    progress: Progress = _silent,
+) -> RunResult:
+    """Run a job: maps, tables and record into its folder.
+
+    Parameters
+    ----------
+    job : from `load_job`.
+    out : the folder to write to; default is the job's own.
+    fresh : start over where an unfinished run lies in the folder.
+    threads : dask threads; default is the number of processors.
+    progress : told the stage and the cells done.
+
+    Raises
+    ------
+    MapperError and its kinds for everything a user can mend.
+    """
+    began = time.monotonic()
+    threads = threads or os.cpu_count() or 1
+    folder = Path(out if out is not None else job.folder).absolute()
+    plan = make_plan(job)
+    windows = blocks(plan.grid, block_shape(plan))
+    with _locked(folder):
+        journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
+        resumed = _compute_blocks(plan, windows, journal, threads, progress)
+        sums = _reduce(journal, len(windows))
+        names = plan.regions.names if plan.regions is not None else ()
+        found = to_totals(sums, names, unit_exponent(plan.grid))
+        checks = _checked(found, folder)
+        _write_maps(plan, windows, journal, folder, (threads, progress))
+        _write_tables(found, folder)
+        result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
+        _write_record(job, plan, result)
+        journal.clear()
+    return result
+
+
+class _locked:  # noqa: N801 - reads as a word in a with statement
+    """One run at a time in a folder; a lock left by a process that died does not count."""
+
+    def __init__(self, folder: Path) -> None:
+        self.folder = folder
+        self.path = folder / ".lock"
+
+    def __enter__(self) -> None:
+        try:
+            self.folder.mkdir(parents=True, exist_ok=True)
+            self._refuse_living()
+            self.path.write_text(str(os.getpid()), encoding="utf-8")
+        except RunFolderError:
+            raise
+        except OSError as cause:
+            raise RunFolderError(
+                f"the run folder cannot be written: {cause.strerror or cause}",
+                where=str(self.folder),
+                fix="--out DIR with a folder that may be written",
+            ) from cause
+
+    def _refuse_living(self) -> None:
+        if not self.path.exists():
+            return
+        text = self.path.read_text(encoding="utf-8").strip()
+        if text.isdigit() and int(text) != os.getpid() and _lives(int(text)):
+            raise RunFolderError(
+                f"another run (process {text}) is writing to this folder",
+                where=str(self.folder),
+                fix="wait for it, or --out DIR for another folder",
+            )
+
+    def __exit__(self, *_: object) -> None:
+        self.path.unlink(missing_ok=True)
+
+
+def _lives(process: int) -> bool:
+    try:
+        os.kill(process, 0)
+    except ProcessLookupError:
+        return False
+    except PermissionError:
+        return True
+    return True
+
+
+def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
+    """What must be the same for finished blocks to be used again."""
+    described = json.dumps(describe_job(job), sort_keys=True, default=str)
+    files = {
+        f"input {Path(path).name}": [Path(path).stat().st_size, Path(path).stat().st_mtime_ns]
+        for path in input_files(job)
+    }
+    return {
+        "job": hashlib.sha256(described.encode()).hexdigest(),
+        "versions": versions(),
+        "blocks": [len(windows), *windows[0].shape],
+        **files,
+    }
+
+
+def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
+    """Compute one block and save it; the task that dask runs."""
+    maps, sums = evaluate_block(plan, window)
+    factor = to_rate(1.0)
+    arrays: dict[str, NDArray[Any]] = {
+        "map_consumption": (maps.consumption * factor).astype(np.float32),
+        "map_drawdown": (maps.drawdown * factor).astype(np.float32),
+        "map_flags": maps.flags,
+    }
+    arrays |= {f"sum_{name}": values for name, values in sums._asdict().items()}
+    journal.save(index, arrays)
+    return window.n_cells
+
+
+class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
+    """Counts the cells of finished tasks."""
+
+    def __init__(self, start: int, total: int, progress: Progress) -> None:
+        super().__init__(posttask=self._count)
+        self.done = start
+        self.total = total
+        self.progress = progress
+
+    def _count(self, key: Any, value: Any, *_: Any) -> None:
+        if isinstance(value, int) and "block" in str(key):
+            self.done += value
+            self.progress("blocks", self.done, self.total)
+
+
+def _compute_blocks(
+    plan: Plan, windows: list[Window], journal: Journal, threads: int, progress: Progress
+) -> int:
+    """Run the block tasks that are not finished; says how many were."""
+    todo = [index for index in range(len(windows)) if not journal.is_done(index)]
+    total = sum(window.n_cells for window in windows)
+    start = total - sum(windows[index].n_cells for index in todo)
+    progress("blocks", start, total)
+    shared = dask.delayed(plan, name="plan", traverse=False)
+    task = dask.delayed(_work, pure=False)
+    tasks = [
+        task(shared, windows[index], journal, index, dask_key_name=f"block-{index}")
+        for index in todo
+    ]
+    with _Watch(start, total, progress):
+        dask.compute(*tasks, scheduler="threads", num_workers=threads)
+    return len(windows) - len(todo)
+
+
+def _reduce(journal: Journal, n_blocks: int) -> BlockSums:
+    total: BlockSums | None = None
+    for index in range(n_blocks):
+        names = [f"sum_{name}" for name in BlockSums._fields]
+        block = BlockSums(*(journal.load(index, name) for name in names))
+        total = block if total is None else total.plus(block)
+    if total is None:  # pragma: no cover - a grid has at least one block
+        raise AssertionError
+    return total
+
+
+def _checked(found: Totals, folder: Path) -> dict[str, float]:
+    checks = closure(found)
+    wrong = {name: value for name, value in checks.items() if value > CLOSURE_LIMIT}
+    if wrong:
+        msg = f"sums do not close in {folder}: {wrong}; this is a fault of saprolite"
+        raise AssertionError(msg)
+    return checks
+
+
+def _write_maps(
+    plan: Plan,
+    windows: list[Window],
+    journal: Journal,
+    folder: Path,
+    how: tuple[int, Progress],
+) -> None:
+    threads, progress = how
+    total = plan.grid.n_cells * len(MAPS)
+    done = 0
+
+    def step(cells: int) -> None:
+        nonlocal done
+        done += cells
+        progress("maps", done, total)
+
+    def pieces(kind: MapKind) -> Iterator[tuple[Window, NDArray[Any]]]:
+        for index, window in enumerate(windows):
+            yield window, journal.load(index, f"map_{kind.name}")
+
+    (folder / "maps").mkdir(exist_ok=True)
+    for kind in MAPS:
+        write_map(folder / "maps", kind, plan.grid, pieces(kind), threads=threads, step=step)
+
+
+def _write_tables(found: Totals, folder: Path) -> None:
+    write_csv(folder / "tables" / "regions.csv", REGION_COLUMNS, region_rows(found))
+    write_csv(folder / "tables" / "regions_by_rock.csv", ROCK_COLUMNS, rock_rows(found))
+
+
+def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
+    found = result.totals
+    record = {
+        "title": job.title,
+        "cautions": list(CAUTIONS),
+        "result": {
+            "consumption_t_per_yr": float(found.consumption.sum()),
+            "drawdown_t_per_yr": float(found.drawdown.sum()),
+            "valid_area_km2": float(found.valid_area.sum()),
+            "area_under_flag_km2": found.flagged,
+        },
+        "checks": dict(result.checks),
+        "job": describe_job(job),
+        **describe_plan(plan),
+        "inputs": describe_inputs(job),
+        "versions": versions(),
+        "constants": constants(),
+        "seconds": round(result.seconds, 3),
+        "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
+    }
+    write_json(result.folder / "run.json", _plain(record))
+
+
+def _plain(value: Any) -> Any:
+    """Turn what JSON does not know into what it does."""
+    if isinstance(value, Mapping):
+        return {str(key): _plain(one) for key, one in value.items()}
+    if isinstance(value, list | tuple):
+        return [_plain(one) for one in value]
+    if isinstance(value, float) and not np.isfinite(value):
+        return None
+    return value
+
+
+@dataclass(frozen=True)
+class Inspection:
+    """What a job is and what its run will cost."""
+
+    job: Job
+    plan: Plan
+    samples: Mapping[str, Sample]
+
+    def lines(self) -> list[str]:
+        """The inspection as text."""
+        grid = self.plan.grid
+        n_blocks = len(blocks(grid, block_shape(self.plan)))
+        unit = "degrees" if grid.is_geographic else "CRS units"
+        lines = [
+            self.job.title,
+            f"grid        {grid.n_rows} x {grid.n_cols} cells of {grid.dx:g} x {grid.dy:g} {unit}, "
+            f"{parse_crs(grid.crs).name}",
+            _lithology_line(self.plan),
+        ]
+        lines += [
+            _layer_line(layer, self.samples[name]) for name, layer in self.plan.layers.items()
+        ]
+        lines += [_water_line(self.plan)] if "runoff" not in self.plan.layers else []
+        lines += [_region_line(self.plan)]
+        lines += [
+            f"law         {rock}: {one.law.name}"
+            + (f"; {'; '.join(one.changed)}" if one.changed else "")
+            for rock, one in self.plan.scheme.by_rock.items()
+        ]
+        lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
+        return lines
+
+
+SECONDS_PER_MILLION_CELLS = 0.6  # on one processor, measured on the island; a rough guide only
+BYTES_PER_BLOCK_CELL = 330  # arrays alive at once while a block is evaluated, measured
+
+
+def inspect(job: Job) -> Inspection:
+    """Look at a job without running it.
+
+    Raises
+    ------
+    MapperError, or ManyProblemsError with every problem that can be found before the run.
+    """
+    plan = make_plan(job)
+    samples = {name: sample_layer(layer) for name, layer in plan.layers.items()}
+    return Inspection(job, plan, samples)
+
+
+_HOW = {
+    "same": "on the grid's own cells",
+    "nearest": "nearest cell",
+    "bilinear": "bilinear between cell centres",
+    "mean": "mean weighted by area",
+    "points": "another CRS: sampled at points of each cell",
+}
+
+
+def _layer_line(layer: Layer, sample: Sample) -> str:
+    source = layer.source
+    unit = INNER_UNIT[QUANTITY[layer.name]]
+    lie = f"{source.shape[0]} x {source.shape[1]} cells of {source.x.step:g}"
+    said = "job" if layer.spec.units else "file"
+    return (
+        f"{layer.name:11} {Path(source.path).name}: {lie}, {parse_crs(source.crs).name}; "
+        f"unit {layer.conversion.unit} ({said}); {sample.low:.4g} .. {sample.median:.4g} .. "
+        f"{sample.high:.4g} {unit} on {100 * sample.coverage:.1f} % of the grid; {_HOW[layer.how]}"
+    )
+
+
+def _lithology_line(plan: Plan) -> str:
+    lithology = plan.lithology
+    name = Path(lithology.spec.path).name
+    rocks = ", ".join(lithology.legend.rocks())
+    if lithology.source is None:
+        return f"lithology   {name}: polygons, exact shares of each cell; {rocks}"
+    shares = "codes of the grid's own cells" if lithology.how == "same" else "shares of each cell"
+    if lithology.how == "points":
+        shares = "another CRS: shares by points of each cell"
+    return f"lithology   {name}: {shares}; {rocks}"
+
+
+def _water_line(plan: Plan) -> str:
+    return f"runoff      derived from precipitation and temperature by {plan.water_method}"
+
+
+def _region_line(plan: Plan) -> str:
+    if plan.regions is None:
+        return "regions     none: totals for the whole grid"
+    notes = "; ".join(plan.regions.notes)
+    return f"regions     {len(plan.regions.names)} by exact coverage" + (
+        f"; {notes}" if notes else ""
+    )
+
+
+def _cost_line(n_cells: int, n_blocks: int, shape: tuple[int, int]) -> str:
+    threads = os.cpu_count() or 1
+    seconds = 2 + n_cells / 1e6 * SECONDS_PER_MILLION_CELLS / threads
+    memory = 300 + shape[0] * shape[1] * BYTES_PER_BLOCK_CELL * threads / 1e6
+    disk = n_cells * 18 / 1e6
+    return (
+        f"cost        {n_blocks} blocks; about {seconds:.0f} s on {threads} processors, "
+        f"{memory:.0f} MB of memory, {disk:.0f} MB of disk while it runs"
+    )

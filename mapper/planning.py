@@ -1,0 +1,291 @@
+"""From a job to a plan: everything opened, checked and brought onto one grid."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from mapper.coverage import polygons_on
+from mapper.engine import Plan
+from mapper.errors import GridError, JobError, Problems
+from mapper.grid import Grid, Window, blocks, parse_crs, same_crs
+from mapper.job import GridSpec, Job, LayerSpec
+from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
+from mapper.layers.lithology import Lithology, unknown_codes
+from mapper.layers.source import Source, file_kind
+from mapper.layers.vector import read_vector, reproject, valid_shapes
+from mapper.layers.warp import subdivisions
+from mapper.legend import Legend, normal_code, read_legend
+from mapper.regions import Regions, open_regions
+from mapper.scheme import Scheme, build_scheme
+
+BLOCK_CELLS = 2**20
+MOST_SAMPLED_CELLS = 2**22
+SAMPLE_SIDE = 256
+
+
+@dataclass(frozen=True)
+class Sample:
+    """What a look at a layer's values on the grid showed."""
+
+    low: float
+    median: float
+    high: float
+    coverage: float
+
+
+def make_plan(job: Job) -> Plan:
+    """Open and check all that a job names.
+
+    Raises
+    ------
+    MapperError, or ManyProblemsError with every problem that can be found before the run.
+    """
+    problems = Problems()
+    sources = _open_sources(job, problems)
+    legend: Legend | None = None
+    with problems.gather():
+        legend = read_legend(
+            job.layers["lithology"].legend or "", where=f"{job.path}, layers.lithology"
+        )
+    scheme: Scheme | None = None
+    if legend is not None:
+        with problems.gather():
+            scheme = build_scheme(job, legend.rocks())
+            _check_layers(job, scheme)
+    grid: Grid | None = None
+    with problems.gather():
+        grid = _choose_grid(job, sources)
+    if grid is None:
+        problems.raise_if_any()
+        raise AssertionError
+    layers = _open_layers(job, sources, grid, problems)
+    lithology = _lithology(job, sources, legend, grid, problems)
+    regions: Regions | None = None
+    if job.regions is not None:
+        with problems.gather():
+            regions = open_regions(job.regions, grid)
+    if lithology is not None:
+        _check_codes(lithology, problems)
+    for layer in layers.values():
+        with problems.gather():
+            sample_layer(layer)
+    problems.raise_if_any()
+    if lithology is None or scheme is None:  # pragma: no cover - then a problem was raised
+        raise AssertionError
+    return Plan(grid, lithology, layers, job.water_method, scheme, regions)
+
+
+def _open_sources(job: Job, problems: Problems) -> dict[str, Source]:
+    sources: dict[str, Source] = {}
+    for name, spec in job.layers.items():
+        with problems.gather():
+            if name == "lithology" and file_kind(spec.path, where=spec.where) == "vector":
+                continue
+            sources[name] = open_source(spec)
+    return sources
+
+
+def _check_layers(job: Job, scheme: Scheme) -> None:
+    problems = Problems()
+    for name in scheme.input_names():
+        if name in job.layers:
+            continue
+        laws = ", ".join(law.name for law in scheme.laws() if name in law.input_names)
+        if name == "runoff":
+            if "precipitation" in job.layers and "temperature" in job.layers:
+                continue
+            needed = "runoff, or precipitation and temperature,"
+        else:
+            needed = f"a {name} layer"
+        problems.add(
+            JobError(
+                f"law {laws} needs {needed} and the job has none",
+                where=f"{job.path}, layers",
+                fix=f'[layers.{name}] with path = "..."',
+            )
+        )
+    problems.raise_if_any()
+
+
+def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
+    spec = job.grid
+    if spec.resolution is not None:
+        return _spelled_grid(spec, job)
+    name = spec.take_from or ("lithology" if "lithology" in sources else _finest(sources))
+    if name not in job.layers:
+        raise JobError(
+            f"from = {name!r} is not a layer of this job",
+            where=f"{job.path}, grid",
+            fix="one of: " + ", ".join(job.layers),
+        )
+    if name not in sources:
+        return None
+    return _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+
+
+def _finest(sources: Mapping[str, Source]) -> str:
+    geographic = {name: bool(parse_crs(one.crs).is_geographic) for name, one in sources.items()}
+    return min(
+        sources, key=lambda name: sources[name].x.step * (1 if not geographic[name] else 1e5)
+    )
+
+
+def _spelled_grid(spec: GridSpec, job: Job) -> Grid:
+    if spec.crs is None or spec.bounds is None or spec.resolution is None:
+        raise JobError(
+            "a grid of one's own needs crs, resolution and bounds together",
+            where=f"{job.path}, grid",
+            fix='crs = "EPSG:4326", resolution = 0.1, bounds = [left, bottom, right, top]',
+        )
+    left, bottom, right, top = spec.bounds
+    dx, dy = spec.resolution
+    n_cols, n_rows = max(1, round((right - left) / dx)), max(1, round((top - bottom) / dy))
+    return Grid(parse_crs(spec.crs).to_wkt(), left, top, dx, dy, n_rows, n_cols)
+
+
+def _cut(grid: Grid, bounds: tuple[float, float, float, float] | None, job: Job) -> Grid:
+    """The part of a grid that bounds enclose, cells kept whole."""
+    if bounds is None:
+        return grid
+    left, bottom, right, top = bounds
+    col = max(0, math.floor((left - grid.left) / grid.dx + 1e-6))
+    row = max(0, math.floor((grid.top - top) / grid.dy + 1e-6))
+    col_stop = min(grid.n_cols, math.ceil((right - grid.left) / grid.dx - 1e-6))
+    row_stop = min(grid.n_rows, math.ceil((grid.top - bottom) / grid.dy - 1e-6))
+    if col_stop <= col or row_stop <= row:
+        raise GridError(
+            f"bounds {list(bounds)} lie outside the grid {[round(one, 6) for one in grid.bounds]}",
+            where=f"{job.path}, grid.bounds",
+            fix="bounds within it",
+        )
+    return replace(
+        grid,
+        left=grid.left + grid.dx * col,
+        top=grid.top - grid.dy * row,
+        n_rows=row_stop - row,
+        n_cols=col_stop - col,
+    )
+
+
+def _open_layers(
+    job: Job, sources: Mapping[str, Source], grid: Grid, problems: Problems
+) -> dict[str, Layer]:
+    layers: dict[str, Layer] = {}
+    for name, source in sources.items():
+        if name == "lithology":
+            continue
+        with problems.gather():
+            layers[name] = open_layer(job.layers[name], source, grid)
+    return layers
+
+
+def _lithology(
+    job: Job,
+    sources: Mapping[str, Source],
+    legend: Legend | None,
+    grid: Grid,
+    problems: Problems,
+) -> Lithology | None:
+    spec = job.layers["lithology"]
+    if legend is None:
+        return None
+    with problems.gather():
+        if "lithology" not in sources:
+            return _from_polygons(spec, legend, grid)
+        source = place(sources["lithology"], grid, where=spec.where)
+        if not source.is_integer and np.dtype(source.dtype).kind != "f":  # pragma: no cover
+            raise AssertionError
+        how: How = how_aligned(source, grid, "mean")
+        points = subdivisions(grid, source) if how == "points" else 1
+        return Lithology(spec, legend, grid, how, source, max(points, 2) if how == "points" else 1)
+    return None
+
+
+def _from_polygons(spec: LayerSpec, legend: Legend, grid: Grid) -> Lithology | None:
+    if spec.column is None:
+        raise JobError(
+            "lithology is polygons, and which column holds the rock is not said",
+            where=spec.where,
+            fix='column = "name of the column"',
+        )
+    features = read_vector(
+        spec.path,
+        layer=spec.sheet,
+        column=spec.column,
+        crs=spec.crs,
+        where=spec.where,
+        key="layers.lithology",
+    )
+    names = tuple(normal_code(str(one)) for one in features.values)
+    shapes = features.shapes
+    if not same_crs(features.crs, grid.crs):
+        shapes = reproject(shapes, features.crs, grid.crs)
+    shapes, _ = valid_shapes(shapes, names)
+    return Lithology(spec, legend, grid, "mean", polygons=polygons_on(grid, names, shapes))
+
+
+def _check_codes(lithology: Lithology, problems: Problems) -> None:
+    """Look for codes that the legend lacks, on the whole of a small map, else on samples."""
+    if lithology.spec.unknown != "error":
+        return
+    lenient = replace(lithology, spec=replace(lithology.spec, unknown="nodata"))
+    found: dict[str, float] = {}
+    for window in sample_windows(lithology.grid):
+        with problems.gather():
+            for code, cells in lenient.codes_in(window).items():
+                found[code] = found.get(code, 0.0) + cells
+    missing = [
+        f"{code} ({cells:.0f} cells)"
+        for code, cells in found.items()
+        if normal_code(code) not in lithology.legend.mixtures
+    ]
+    if missing:
+        problems.add(unknown_codes(missing, lithology.spec, lithology.legend))
+
+
+def sample_windows(grid: Grid) -> list[Window]:
+    """Windows to look at before a run: all of a small grid, a lattice of squares of a large one."""
+    if grid.n_cells <= MOST_SAMPLED_CELLS:
+        return blocks(grid, (1024, 1024))
+    rows = np.linspace(0, max(grid.n_rows - SAMPLE_SIDE, 0), 4).astype(int)
+    cols = np.linspace(0, max(grid.n_cols - SAMPLE_SIDE, 0), 4).astype(int)
+    side = SAMPLE_SIDE
+    return [
+        Window(int(r), int(c), min(side, grid.n_rows), min(side, grid.n_cols))
+        for r in rows
+        for c in cols
+    ]
+
+
+def sample_layer(layer: Layer) -> Sample:
+    """Look at a layer's values on the grid; raises ValuesError where they make no sense."""
+    found: list[NDArray[np.float64]] = []
+    n_cells = 0
+    for window in sample_windows(layer.grid):
+        values = layer.values(window)
+        n_cells += values.size
+        found.append(values[~np.isnan(values)])
+    values = np.concatenate(found)
+    if not values.size:
+        return Sample(np.nan, np.nan, np.nan, 0.0)
+    return Sample(
+        float(values.min()), float(np.median(values)), float(values.max()), values.size / n_cells
+    )
+
+
+def block_shape(plan: Plan) -> tuple[int, int]:
+    """Rows and columns of a block: squares, or bands where the largest file lies in strips."""
+    sources = [layer.source for layer in plan.layers.values()]
+    if plan.lithology.source is not None:
+        sources.append(plan.lithology.source)
+    largest = max(sources, key=lambda one: one.x.size * one.y.size)
+    grid = plan.grid
+    strips = largest.block[1] >= largest.x.size and largest.x.size > 1024
+    if strips and largest.block[0] < 1024:
+        return max(1, min(grid.n_rows, BLOCK_CELLS // grid.n_cols)), grid.n_cols
+    return min(grid.n_rows, 1024), min(grid.n_cols, 1024)
