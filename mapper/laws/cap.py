@@ -12,6 +12,7 @@ from mapper.laws.law import Floats, Law, Parameter, Spread, Values
 from mapper.laws.rock_groups import CARBONATE_ROCKS
 
 SQUARE_METRES_PER_KM2 = 1e6
+SILICATE_LIMIT = 150.0  # t km-2 yr-1, Dixon & von Blanckenburg 2012, read
 NO_LIMIT = 1e9  # t km-2 yr-1: rock that dissolves whole is not held back by its supply
 
 WEATHERING_LIMIT = Parameter(
@@ -19,8 +20,7 @@ WEATHERING_LIMIT = Parameter(
     symbol="W_max",
     unit="t km-2 yr-1",
     meaning="most mass that silicate rock can lose in solution",
-    default=150.0,
-    by_rock=dict.fromkeys((*CARBONATE_ROCKS, "evaporite"), NO_LIMIT),
+    default=SILICATE_LIMIT,
     low=10.0,
     high=NO_LIMIT,
     spread=Spread(kind="triangular", low=100.0, high=200.0),
@@ -123,12 +123,15 @@ def cap_law(law: Law) -> Law:
     """
     if law.output != "consumption":
         raise ValueError(f"law {law.name!r} only ranks: there is no uptake to hold at a limit")
+    unlimited = (*CARBONATE_ROCKS, "evaporite")
+    limits = {rock: NO_LIMIT if rock in unlimited else SILICATE_LIMIT for rock in law.rocks}
+    limit = replace(WEATHERING_LIMIT, default=None, by_rock=limits)
     return replace(
         law,
         name=f"{law.name}+supply-cap",
         title=f"{law.title}, held at the supply limit",
         function=Capped(law.function),
-        parameters=(*law.parameters, WEATHERING_LIMIT, CONSUMPTION_PER_TONNE),
+        parameters=(*law.parameters, limit, CONSUMPTION_PER_TONNE),
         formula=f"min({law.formula}; c W_max)",
         reference=f"{law.reference}; limit: Dixon & von Blanckenburg 2012",
         cautions=(*law.cautions, "modified by the supply limit; its step to CO2 is the project's"),

@@ -43,6 +43,11 @@ def test_carbonate_rock_is_not_held_back_by_its_supply():
     assert capped.function(2000.0, **capped.central_values("limestone")) == free
 
 
+def test_a_capped_law_serves_no_rock_that_the_law_does_not():
+    with pytest.raises(KeyError, match="no weathering_limit for rock 'granite'"):
+        cap_law(LAWS["dessert-2003"]).central_values("granite")
+
+
 def test_the_step_to_co2_lies_between_its_two_limits():
     # by hand from the upper crust: 0.4161 mol of charge in 12.14 g of oxides, in 100 g of rock
     one = cap_law(LAWS["dessert-2003"]).parameter("limit_consumption_per_tonne")
