@@ -147,7 +147,7 @@ RUNOFF = Input(
     name="runoff",
     low=0.0,
     high=3000.0,
-    range_source="the base rates' own range was not recovered; a bound for most land",
+    range_source="the fitted range was not recovered; a bound for most land",
     range_grade="project",
 )
 TEMPERATURE = Input(

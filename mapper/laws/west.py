@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 
 from mapper.laws.law import GAS_CONSTANT, CheckPoint, Floats, Input, Law, Parameter, Spread, Values
@@ -101,7 +103,7 @@ def take_up_by_erosion(  # noqa: PLR0913 - three layers, the source's seven numb
     active_layer : z, mass of the layer that weathers; 8.9, from memory [t m-2].
     cation_share : X, cations in fresh rock; 0.09, from memory [1].
     age_exponent : s = sigma + 1, how rates fall with the age of a mineral; 0.89, memory [1].
-    consumption_per_tonne : CO2 for each tonne of cations; 47 218, computed [mol t-1].
+    consumption_per_tonne : CO2 for each tonne of cations; 47 219, this project's [mol t-1].
 
     Returns
     -------
@@ -188,7 +190,7 @@ WEST_2012 = Law(
             range_grade="project",
         ),
         RUNOFF,
-        TEMPERATURE,
+        replace(TEMPERATURE, range_source="-10 to 30 degC; the fitted range was not recovered"),
     ),
     parameters=(
         _from_memory(
@@ -249,7 +251,7 @@ WEST_2012 = Law(
                 "2003, from memory), one mole of CO2 for each charge: the reading of W as a mass "
                 "of metal is this project's. Pure K to pure Mg would be 25 600 to 82 300."
             ),
-            grade="computed",
+            grade="project",
         ),
     ),
     rocks=SILICATE_ROCKS,
