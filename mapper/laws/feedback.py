@@ -214,7 +214,11 @@ _BERNER_PARAMETERS = (
     RUNOFF_RISE,
     _from_memory("runoff_power", "n", "1", "power of runoff in the uptake", (0.65, 0.0, 1.0)),
     _from_memory("carbonate_rise", "k", "K-1", "rise of carbonate per kelvin", (0.087, 0.0, 0.2)),
-    REFERENCE_TEMPERATURE,
+    replace(
+        REFERENCE_TEMPERATURE,
+        source="not recovered for this source; 288 K as in Walker et al.: this project's choice",
+        grade="project",
+    ),
     CO2_RATIO,
     _from_memory("fertilisation", "f", "1", "power of the CO2 term", (0.4, 0.0, 1.0)),
     _LAND_PLANTS,
