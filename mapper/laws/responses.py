@@ -158,11 +158,7 @@ TEMPERATURE = Input(
     range_grade="project",
 )
 VEGETATION = Input(
-    name="vegetation",
-    low=0.0,
-    high=1.0,
-    range_source="a share",
-    range_grade="project",
+    name="vegetation", low=0.0, high=1.0, range_source="a share", range_grade="project"
 )
 SOIL_SHIELDING = Input(
     name="soil_shielding",
