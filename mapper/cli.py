@@ -82,6 +82,8 @@ def _run(chosen: argparse.Namespace) -> int:
 
 def summary_lines(title: str, result: RunResult) -> list[str]:
     """What a run found, for the terminal."""
+    from mapper.exports.spread import spread_lines  # noqa: PLC0415
+
     found = result.totals
     consumption, drawdown = found.consumption.sum(), found.drawdown.sum()
     mapped, valid = found.rock_area.sum(), found.valid_area.sum()
@@ -92,13 +94,35 @@ def summary_lines(title: str, result: RunResult) -> list[str]:
         f"  over {valid:,.0f} km2: {100 * valid / mapped if mapped else 0:.1f} % of the "
         f"{mapped:,.0f} km2 of mapped rock had data",
     ]
-    flagged = float(found.outside_range.sum())
-    if flagged:
-        lines.append(f"  {flagged:,.0f} km2 lie outside the range that their law was fitted in")
+    lines.extend(_flag_lines(result))
+    lines.extend(spread_lines(result.laws))
     lines.extend(_top_regions(result))
     lines.append(f"  {result.folder} ({result.seconds:.1f} s)")
     lines.append("  A screening estimate, not verified removal.")
     return lines
+
+
+def _flag_lines(result: RunResult) -> list[str]:
+    """One line for each cause that holds on some ground."""
+    from mapper.exports.tables import CAUSES  # noqa: PLC0415
+
+    found = result.totals
+    mapped = float(found.rock_area.sum())
+    held = {cause: area for cause, area in found.flagged.items() if area > 0}
+    if not held:
+        return []
+    width = max(len(_short(CAUSES[cause])) for cause in held)
+    return [
+        "  of the mapped rock, by cause:",
+        *(
+            f"    {_short(CAUSES[cause]):{width}}  {area:12,.1f} km2  {100 * area / mapped:5.1f} %"
+            for cause, area in held.items()
+        ),
+    ]
+
+
+def _short(meaning: str) -> str:
+    return meaning.partition(":")[0]
 
 
 def _top_regions(result: RunResult) -> list[str]:

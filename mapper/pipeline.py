@@ -31,11 +31,22 @@ from mapper.exports.record import (
     input_files,
     versions,
 )
+from mapper.exports.spread import (
+    LAW_COLUMNS,
+    SPREAD_COLUMNS,
+    LawTotals,
+    describe_spread,
+    law_rows,
+    spread_rows,
+    to_law_totals,
+)
 from mapper.exports.tables import (
+    FLAG_COLUMNS,
     REGION_COLUMNS,
     ROCK_COLUMNS,
     Totals,
     closure,
+    flag_rows,
     region_rows,
     rock_rows,
     to_totals,
@@ -63,6 +74,7 @@ class RunResult:
     checks: Mapping[str, float]
     seconds: float
     resumed_blocks: int
+    laws: tuple[LawTotals, ...] = ()
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -104,8 +116,10 @@ def run(
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (threads, progress))
+        laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, folder)
-        result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
+        _write_laws(laws, found.names, folder)
+        result = RunResult(folder, found, checks, time.monotonic() - began, resumed, laws=laws)
         _write_record(job, plan, result)
         journal.clear()
     return result
@@ -268,6 +282,18 @@ def _write_maps(
 def _write_tables(found: Totals, folder: Path) -> None:
     write_csv(folder / "tables" / "regions.csv", REGION_COLUMNS, region_rows(found))
     write_csv(folder / "tables" / "regions_by_rock.csv", ROCK_COLUMNS, rock_rows(found))
+    write_csv(folder / "tables" / "flags.csv", FLAG_COLUMNS, flag_rows(found))
+
+
+def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Path) -> None:
+    """Write the tables of a job with several laws; those of an earlier run are taken away."""
+    paths = [folder / "tables" / name for name in ("laws.csv", "law_spread.csv")]
+    if not laws:
+        for path in paths:
+            path.unlink(missing_ok=True)
+        return
+    write_csv(paths[0], LAW_COLUMNS, law_rows(laws, names))
+    write_csv(paths[1], SPREAD_COLUMNS, spread_rows(laws, names))
 
 
 def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
@@ -280,6 +306,7 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
             "drawdown_t_per_yr": float(found.drawdown.sum()),
             "valid_area_km2": float(found.valid_area.sum()),
             "area_under_flag_km2": found.flagged,
+            "between_laws": describe_spread(result.laws),
         },
         "checks": dict(result.checks),
         "job": describe_job(job),
@@ -332,6 +359,12 @@ class Inspection:
             f"law         {rock}: {one.law.name}"
             + (f"; {'; '.join(one.changed)}" if one.changed else "")
             for rock, one in self.plan.scheme.by_rock.items()
+        ]
+        lines += [
+            f"alternative {one.name}, weight {one.weight:g}: in place of {self.plan.scheme.name} on "
+            + ", ".join(one.replaced)
+            + (f"; not on {', '.join(one.kept)}" if one.kept else "")
+            for one in self.plan.scheme.alternatives
         ]
         lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
         return lines
