@@ -361,8 +361,8 @@ class Inspection:
             for rock, one in self.plan.scheme.by_rock.items()
         ]
         lines += [
-            f"alternative {one.name}, weight {one.weight:g}: in place of {self.plan.scheme.name} on "
-            + ", ".join(one.replaced)
+            f"alternative {one.name}, weight {one.weight:g}: in place of "
+            f"{self.plan.scheme.name} on {', '.join(one.replaced)}"
             + (f"; not on {', '.join(one.kept)}" if one.kept else "")
             for one in self.plan.scheme.alternatives
         ]

@@ -32,8 +32,12 @@ UNMAPPED = "unmapped"
 
 OUTSIDE = "outside_law_range"
 CAUSES: dict[str, str] = {
-    **{(flag.name or "").lower(): FLAG_MEANING[flag] for flag in Flag if flag in COUNTED_FLAGS},
-    OUTSIDE: "any layer outside the law's range: the causes above together, ground counted once",
+    **{
+        OUTSIDE if flag == OUTSIDE_RANGE else (flag.name or "").lower(): FLAG_MEANING.get(
+            flag, "any layer outside the law's range: the three above, ground counted once"
+        )
+        for flag in COUNTED_FLAGS
+    },
     "no_data": "no result: a layer that the law reads has no data",
 }
 """Why ground is counted in ``flags.csv``, and what it means."""
