@@ -280,7 +280,7 @@ def free_place(taken: Floats, length: float) -> float | None:
     Examples
     --------
     >>> free_place(np.array([0.9]), 0.4)
-    0.68
+    0.7
     """
     for middle in np.arange(1.0 - length / 2, length / 2, -0.02):
         if not (np.abs(taken - middle) < length / 2).any():
