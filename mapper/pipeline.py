@@ -7,8 +7,8 @@ import json
 import os
 import resource
 import time
-from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
@@ -18,6 +18,7 @@ from dask.callbacks import Callback
 from numpy.typing import NDArray
 
 from mapper.accounting import to_rate
+from mapper.cluster import connected, finished
 from mapper.engine import BlockSums, Plan, evaluate_block
 from mapper.errors import RunFolderError
 from mapper.exports.files import write_csv, write_json
@@ -40,11 +41,19 @@ from mapper.exports.tables import (
     rock_rows,
     to_totals,
 )
-from mapper.grid import Window, blocks, parse_crs
+from mapper.grid import Grid, Window, blocks, parse_crs
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
-from mapper.planning import Sample, block_shape, make_plan, sample_layer
+from mapper.planning import (
+    BASE_MEMORY,
+    BYTES_PER_CELL,
+    DEFAULT_MEMORY,
+    Sample,
+    block_shape,
+    make_plan,
+    sample_layer,
+)
 from mapper.sums import unit_exponent
 from mapper.units import INNER_UNIT
 
@@ -52,6 +61,20 @@ CLOSURE_LIMIT = 1e-12
 
 Progress = Callable[[str, int, int], None]
 """Told the stage, the cells done and the cells in all."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Engine:
+    """What a run works with.
+
+    ``threads``: dask threads, or processes with ``scheduler`` "local". ``scheduler``: the address
+    of a dask.distributed scheduler whose workers see the same files. ``memory``: bytes that the
+    run should stay under; it sets the size of a block.
+    """
+
+    threads: int = field(default_factory=lambda: os.cpu_count() or 1)
+    scheduler: str | None = None
+    memory: float = DEFAULT_MEMORY
 
 
 @dataclass(frozen=True)
@@ -74,7 +97,7 @@ def run(
     *,
     out: str | Path | None = None,
     fresh: bool = False,
-    threads: int | None = None,
+    engine: Engine | None = None,
     progress: Progress = _silent,
 ) -> RunResult:
     """Run a job: maps, tables and record into its folder.
@@ -84,7 +107,7 @@ def run(
     job : from `load_job`.
     out : the folder to write to; default is the job's own.
     fresh : start over where an unfinished run lies in the folder.
-    threads : dask threads; default is the number of processors.
+    engine : threads, scheduler and memory; default is all processors of this machine.
     progress : told the stage and the cells done.
 
     Raises
@@ -92,18 +115,18 @@ def run(
     MapperError and its kinds for everything a user can mend.
     """
     began = time.monotonic()
-    threads = threads or os.cpu_count() or 1
+    engine = engine or Engine()
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
-    windows = blocks(plan.grid, block_shape(plan))
+    windows = blocks(plan.grid, block_shape(plan, engine.threads, engine.memory))
     with _locked(folder):
         journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
-        resumed = _compute_blocks(plan, windows, journal, threads, progress)
+        resumed = _compute_blocks(plan, windows, journal, engine, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
-        _write_maps(plan, windows, journal, folder, (threads, progress))
+        _write_maps(plan, windows, journal, folder, (engine.threads, progress))
         _write_tables(found, folder)
         result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
         _write_record(job, plan, result)
@@ -189,34 +212,50 @@ def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
 class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
     """Counts the cells of finished tasks."""
 
-    def __init__(self, start: int, total: int, progress: Progress) -> None:
+    def __init__(self, stage: str, start: int, total: int, progress: Progress) -> None:
         super().__init__(posttask=self._count)
+        self.stage = stage
         self.done = start
         self.total = total
         self.progress = progress
 
     def _count(self, key: Any, value: Any, *_: Any) -> None:
-        if isinstance(value, int) and "block" in str(key):
+        if isinstance(value, int) and str(key).startswith(self.stage[:-1]):
             self.done += value
-            self.progress("blocks", self.done, self.total)
+            self.progress(self.stage, self.done, self.total)
 
 
 def _compute_blocks(
-    plan: Plan, windows: list[Window], journal: Journal, threads: int, progress: Progress
+    plan: Plan,
+    windows: list[Window],
+    journal: Journal,
+    engine: Engine,
+    progress: Progress,
 ) -> int:
     """Run the block tasks that are not finished; says how many were."""
     todo = [index for index in range(len(windows)) if not journal.is_done(index)]
     total = sum(window.n_cells for window in windows)
     start = total - sum(windows[index].n_cells for index in todo)
     progress("blocks", start, total)
+    if engine.scheduler is not None:
+        with connected(engine.scheduler, engine.threads) as client:
+            plan_there = client.scatter(plan, broadcast=True)
+            futures = [
+                client.submit(_work, plan_there, windows[index], journal, index, pure=False)
+                for index in todo
+            ]
+            for cells in finished(futures):
+                start += cells
+                progress("blocks", start, total)
+        return len(windows) - len(todo)
     shared = dask.delayed(plan, name="plan", traverse=False)
     task = dask.delayed(_work, pure=False)
     tasks = [
         task(shared, windows[index], journal, index, dask_key_name=f"block-{index}")
         for index in todo
     ]
-    with _Watch(start, total, progress):
-        dask.compute(*tasks, scheduler="threads", num_workers=threads)
+    with _Watch("blocks", start, total, progress):
+        dask.compute(*tasks, scheduler="threads", num_workers=engine.threads)
     return len(windows) - len(todo)
 
 
@@ -249,20 +288,24 @@ def _write_maps(
 ) -> None:
     threads, progress = how
     total = plan.grid.n_cells * len(MAPS)
-    done = 0
-
-    def step(cells: int) -> None:
-        nonlocal done
-        done += cells
-        progress("maps", done, total)
-
-    def pieces(kind: MapKind) -> Iterator[tuple[Window, NDArray[Any]]]:
-        for index, window in enumerate(windows):
-            yield window, journal.load(index, f"map_{kind.name}")
-
+    progress("maps", 0, total)
     (folder / "maps").mkdir(exist_ok=True)
-    for kind in MAPS:
-        write_map(folder / "maps", kind, plan.grid, pieces(kind), threads=threads, step=step)
+    task = dask.delayed(_write_one_map, pure=False, traverse=False)
+    tasks = [
+        task(folder, kind, plan.grid, windows, journal, dask_key_name=f"map-{kind.name}")
+        for kind in MAPS
+    ]
+    with _Watch("maps", 0, total, progress):
+        dask.compute(*tasks, scheduler="threads", num_workers=threads)
+
+
+def _write_one_map(
+    folder: Path, kind: MapKind, grid: Grid, windows: list[Window], journal: Journal
+) -> int:
+    pieces = (
+        (window, journal.load(index, f"map_{kind.name}")) for index, window in enumerate(windows)
+    )
+    return write_map(folder / "maps", kind, grid, pieces, threads=2)
 
 
 def _write_tables(found: Totals, folder: Path) -> None:
@@ -338,7 +381,6 @@ class Inspection:
 
 
 SECONDS_PER_MILLION_CELLS = 0.6  # on one processor, measured on the island; a rough guide only
-BYTES_PER_BLOCK_CELL = 330  # arrays alive at once while a block is evaluated, measured
 
 
 def inspect(job: Job) -> Inspection:
@@ -402,7 +444,7 @@ def _region_line(plan: Plan) -> str:
 def _cost_line(n_cells: int, n_blocks: int, shape: tuple[int, int]) -> str:
     threads = os.cpu_count() or 1
     seconds = 2 + n_cells / 1e6 * SECONDS_PER_MILLION_CELLS / threads
-    memory = 300 + shape[0] * shape[1] * BYTES_PER_BLOCK_CELL * threads / 1e6
+    memory = (BASE_MEMORY + shape[0] * shape[1] * BYTES_PER_CELL * threads) / 1e6
     disk = n_cells * 18 / 1e6
     return (
         f"cost        {n_blocks} blocks; about {seconds:.0f} s on {threads} processors, "

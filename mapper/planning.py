@@ -23,7 +23,11 @@ from mapper.legend import Legend, normal_code, read_legend
 from mapper.regions import Regions, open_regions
 from mapper.scheme import Scheme, build_scheme
 
-BLOCK_CELLS = 2**20
+LARGEST_SIDE = 1024
+SMALLEST_SIDE = 128
+DEFAULT_MEMORY = 2e9
+BASE_MEMORY = 6e8  # the libraries, GDAL's cache and the assembly of maps, measured
+BYTES_PER_CELL = 400.0  # arrays alive at once while a block is evaluated, measured
 MOST_SAMPLED_CELLS = 2**22
 SAMPLE_SIDE = 256
 
@@ -278,8 +282,13 @@ def sample_layer(layer: Layer) -> Sample:
     )
 
 
-def block_shape(plan: Plan) -> tuple[int, int]:
-    """Rows and columns of a block: squares, or bands where the largest file lies in strips."""
+def block_shape(plan: Plan, threads: int = 2, memory: float = DEFAULT_MEMORY) -> tuple[int, int]:
+    """Rows and columns of a block: squares, or bands where the largest file lies in strips.
+
+    As many cells as the memory holds for all threads together, up to `LARGEST_SIDE` squared.
+    """
+    room = max(memory - BASE_MEMORY, 0.0) / (threads * BYTES_PER_CELL)
+    side = int(np.clip(2.0 ** np.floor(np.log2(max(room, 1.0)) / 2), SMALLEST_SIDE, LARGEST_SIDE))
     sources = [layer.source for layer in plan.layers.values()]
     if plan.lithology.source is not None:
         sources.append(plan.lithology.source)
@@ -287,5 +296,5 @@ def block_shape(plan: Plan) -> tuple[int, int]:
     grid = plan.grid
     strips = largest.block[1] >= largest.x.size and largest.x.size > 1024
     if strips and largest.block[0] < 1024:
-        return max(1, min(grid.n_rows, BLOCK_CELLS // grid.n_cols)), grid.n_cols
-    return min(grid.n_rows, 1024), min(grid.n_cols, 1024)
+        return max(1, min(grid.n_rows, side**2 // grid.n_cols)), grid.n_cols
+    return min(grid.n_rows, side), min(grid.n_cols, side)
