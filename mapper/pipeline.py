@@ -18,8 +18,8 @@ from dask.callbacks import Callback
 from numpy.typing import NDArray
 
 from mapper.accounting import to_rate
-from mapper.engine import BlockSums, Plan, evaluate_block
-from mapper.errors import RunFolderError
+from mapper.engine import KEPT, BlockSums, Plan, evaluate_block_states, state_layout
+from mapper.errors import JobError, RunFolderError
 from mapper.exports.files import write_csv, write_json
 from mapper.exports.maps import MAPS, MapKind, write_map
 from mapper.exports.record import (
@@ -39,19 +39,47 @@ from mapper.exports.tables import (
     region_rows,
     rock_rows,
     to_totals,
+    with_intervals,
 )
 from mapper.grid import Window, blocks, parse_crs
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
 from mapper.planning import Sample, block_shape, make_plan, sample_layer
+from mapper.rocks import ROCK_NAMES
+from mapper.states import StateCounts, StateLayout, merge_states, to_states
 from mapper.sums import unit_exponent
+from mapper.uncertainty.draws import draw_quantiles
+from mapper.uncertainty.intervals import Intervals, find_intervals
+from mapper.uncertainty.propagate import Drawn, Samples, Work, draw_samples, propagate
+from mapper.uncertainty.quantities import Doubts, find_doubts
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
 
 Progress = Callable[[str, int, int], None]
 """Told the stage, the cells done and the cells in all."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Draws:
+    """What a run draws, known before its blocks are computed."""
+
+    doubts: Doubts
+    quantiles: Mapping[str, NDArray[np.float64]]
+    samples: Samples
+    layout: StateLayout
+
+
+@dataclass(frozen=True, kw_only=True)
+class SpreadFound:
+    """What the draws gave: totals of every draw, and their intervals."""
+
+    draws: Draws
+    drawn: Drawn
+    intervals: Intervals
+    n_states: int
+    seconds: float
 
 
 @dataclass(frozen=True)
@@ -63,6 +91,7 @@ class RunResult:
     checks: Mapping[str, float]
     seconds: float
     resumed_blocks: int
+    spread: SpreadFound | None = None
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -95,17 +124,20 @@ def run(
     threads = threads or os.cpu_count() or 1
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
+    draws = _make_draws(job, plan)
+    layout = None if draws is None else draws.layout
     windows = blocks(plan.grid, block_shape(plan))
     with _locked(folder):
         journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
-        resumed = _compute_blocks(plan, windows, journal, threads, progress)
+        resumed = _compute_blocks((plan, layout), windows, journal, threads, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (threads, progress))
-        _write_tables(found, folder)
-        result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
+        spread = None if draws is None else _run_draws(draws, plan, journal, found, threads)
+        _write_tables(found, spread, folder)
+        result = RunResult(folder, found, checks, time.monotonic() - began, resumed, spread)
         _write_record(job, plan, result)
         journal.clear()
     return result
@@ -172,9 +204,65 @@ def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
     }
 
 
-def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
+def _make_draws(job: Job, plan: Plan) -> Draws | None:
+    """Find what is uncertain and draw it; None where the job has no ``[uncertainty]``."""
+    if job.uncertainty is None:
+        return None
+    doubts = find_doubts(job, plan.scheme)
+    quantiles = draw_quantiles(job.uncertainty, doubts.keys, where=job.path)
+    samples = draw_samples(doubts, quantiles, job.uncertainty.draws)
+    layout = state_layout(plan)
+    if not layout.fits(plan.n_regions):
+        raise JobError(
+            f"{plan.n_regions} regions and {len(layout.names)} layers are too many for draws",
+            where=f"{job.path}, uncertainty",
+            fix="fewer regions, or no [uncertainty] table",
+        )
+    return Draws(doubts=doubts, quantiles=quantiles, samples=samples, layout=layout)
+
+
+def _run_draws(
+    draws: Draws, plan: Plan, journal: Journal, found: Totals, threads: int
+) -> SpreadFound:
+    """Merge the states of the blocks and evaluate every draw on them."""
+    began = time.monotonic()
+    n_blocks = len(blocks(plan.grid, block_shape(plan)))
+    counts = _merge_blocks(journal, n_blocks)
+    states = to_states(counts, draws.layout, unit_exponent(plan.grid))
+
+    def apply(work: list[Work]) -> list[NDArray[np.float64]]:
+        tasks = [dask.delayed(one, pure=False)() for one in work]
+        return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
+
+    drawn = propagate(
+        plan.scheme, states, draws.samples, found.consumption, KEPT, apply=apply
+    )
+    return SpreadFound(
+        draws=draws,
+        drawn=drawn,
+        intervals=find_intervals(drawn, len(ROCK_NAMES)),
+        n_states=counts.key.size,
+        seconds=time.monotonic() - began,
+    )
+
+
+STATES_HELD = 2_000_000
+"""Unmerged states in memory before they are merged."""
+
+
+def _merge_blocks(journal: Journal, n_blocks: int) -> StateCounts:
+    merged: list[StateCounts] = []
+    for index in range(n_blocks):
+        names = [f"state_{name}" for name in StateCounts._fields]
+        merged.append(StateCounts(*(journal.load(index, name) for name in names)))
+        if sum(part.key.size for part in merged) > STATES_HELD:
+            merged = [merge_states(merged)]
+    return merge_states(merged)
+
+
+def _work(todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int) -> int:
     """Compute one block and save it; the task that dask runs."""
-    maps, sums = evaluate_block(plan, window)
+    maps, sums, states = evaluate_block_states(todo[0], window, todo[1])
     factor = to_rate(1.0)
     arrays: dict[str, NDArray[Any]] = {
         "map_consumption": (maps.consumption * factor).astype(np.float32),
@@ -182,6 +270,8 @@ def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
         "map_flags": maps.flags,
     }
     arrays |= {f"sum_{name}": values for name, values in sums._asdict().items()}
+    if states is not None:
+        arrays |= {f"state_{name}": values for name, values in states._asdict().items()}
     journal.save(index, arrays)
     return window.n_cells
 
@@ -202,14 +292,18 @@ class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
 
 
 def _compute_blocks(
-    plan: Plan, windows: list[Window], journal: Journal, threads: int, progress: Progress
+    what: tuple[Plan, StateLayout | None],
+    windows: list[Window],
+    journal: Journal,
+    threads: int,
+    progress: Progress,
 ) -> int:
     """Run the block tasks that are not finished; says how many were."""
     todo = [index for index in range(len(windows)) if not journal.is_done(index)]
     total = sum(window.n_cells for window in windows)
     start = total - sum(windows[index].n_cells for index in todo)
     progress("blocks", start, total)
-    shared = dask.delayed(plan, name="plan", traverse=False)
+    shared = dask.delayed(what, name="plan", traverse=False)
     task = dask.delayed(_work, pure=False)
     tasks = [
         task(shared, windows[index], journal, index, dask_key_name=f"block-{index}")
@@ -265,9 +359,12 @@ def _write_maps(
         write_map(folder / "maps", kind, plan.grid, pieces(kind), threads=threads, step=step)
 
 
-def _write_tables(found: Totals, folder: Path) -> None:
-    write_csv(folder / "tables" / "regions.csv", REGION_COLUMNS, region_rows(found))
-    write_csv(folder / "tables" / "regions_by_rock.csv", ROCK_COLUMNS, rock_rows(found))
+def _write_tables(found: Totals, spread: SpreadFound | None, folder: Path) -> None:
+    intervals = None if spread is None else spread.intervals
+    names = with_intervals if spread is not None else tuple
+    tables = folder / "tables"
+    write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
+    write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
 
 
 def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
