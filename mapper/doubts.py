@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import TYPE_CHECKING, Any, Literal, get_args
 
 from mapper.errors import JobError
@@ -36,12 +36,6 @@ RANKED_BY = (
 )
 
 KEPT_SHARE = "kept_share"
-KEPT_SHARE_SPREAD = Spread(kind="lognormal", sd=0.15, per_rock=True)
-KEPT_SHARE_SOURCE = (
-    "this project's choice: the calcium and magnesium in rocks of one name vary, the compositions "
-    "are typical ones from memory, and reverse weathering, which would keep a part of the sodium "
-    "and potassium too, is left out of the central value"
-)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -60,7 +54,7 @@ class UncertaintySpec:
     seed: int = 0
     method: str = "latin-hypercube"
     layers: Mapping[str, Spread] = field(default_factory=dict)
-    kept_share: Spread = KEPT_SHARE_SPREAD
+    kept_share: Spread | None = None
     correlations: tuple[Correlation, ...] = ()
 
 
@@ -108,22 +102,15 @@ def uncertainty_spec(table: _Table) -> UncertaintySpec:
     """Read ``[uncertainty]``; problems are noted in the table."""
     layers = table.table("layers")
     kept = table.table(KEPT_SHARE)
-    spread = spread_of(kept, default="lognormal") or KEPT_SHARE_SPREAD
+    spread = spread_of(kept, default="lognormal")
     per_rock = kept.flag("per_rock")
     return UncertaintySpec(
         draws=table.whole("draws", default=1000, least=1),
         seed=table.whole("seed", default=0, least=0),
         method=table.choice("method", METHODS, default=METHODS[0]),
         layers=_layer_spreads(layers),
-        kept_share=_with_per_rock(spread, default=True, said=per_rock),
+        kept_share=None if spread is None else replace(spread, per_rock=per_rock is not False),
         correlations=_correlations(table),
-    )
-
-
-def _with_per_rock(spread: Spread, *, default: bool, said: bool | None) -> Spread:
-    per_rock = default if said is None else said
-    return Spread(
-        kind=spread.kind, sd=spread.sd, low=spread.low, high=spread.high, per_rock=per_rock
     )
 
 

@@ -18,8 +18,8 @@ from mapper.layers.lithology import Lithology, RockCells
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import RockLaw, Scheme
-from mapper.states import StateCounts, StateLayout, count_states
 from mapper.states import AXES as STATE_AXES
+from mapper.states import StateCounts, StateLayout, count_states
 from mapper.sums import LIMBS, Counts, add_up, unit_exponent
 
 Floats = NDArray[np.float64]
@@ -204,9 +204,7 @@ def _split_ground(rocks: RockCells, regions: RegionCells, areas: Floats) -> _Gro
     pieces = regions.split(rocks.cell)
     cell = rocks.cell[pieces.entry]
     key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
-    return _Ground(
-        pieces.entry, cell, key, areas[cell] * rocks.share[pieces.entry] * pieces.part
-    )
+    return _Ground(pieces.entry, cell, key, areas[cell] * rocks.share[pieces.entry] * pieces.part)
 
 
 def _count_block(

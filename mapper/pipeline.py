@@ -18,8 +18,14 @@ from dask.callbacks import Callback
 from numpy.typing import NDArray
 
 from mapper.accounting import to_rate
-from mapper.engine import KEPT, BlockSums, Plan, evaluate_block_states, state_layout
-from mapper.errors import JobError, RunFolderError
+from mapper.engine import BlockSums, Plan, evaluate_block_states
+from mapper.errors import RunFolderError
+from mapper.exports.doubts import (
+    describe_spread,
+    rank_totals,
+    write_ranking,
+    write_sensitivity,
+)
 from mapper.exports.files import write_csv, write_json
 from mapper.exports.maps import MAPS, MapKind, write_map
 from mapper.exports.record import (
@@ -46,40 +52,17 @@ from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
 from mapper.planning import Sample, block_shape, make_plan, sample_layer
-from mapper.rocks import ROCK_NAMES
-from mapper.states import StateCounts, StateLayout, merge_states, to_states
+from mapper.ranking import CLEARLY_AHEAD, Ranking
+from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
-from mapper.uncertainty.draws import draw_quantiles
-from mapper.uncertainty.intervals import Intervals, find_intervals
-from mapper.uncertainty.propagate import Drawn, Samples, Work, draw_samples, propagate
-from mapper.uncertainty.quantities import Doubts, find_doubts
+from mapper.uncertainty.propagate import Work
+from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
 
 Progress = Callable[[str, int, int], None]
 """Told the stage, the cells done and the cells in all."""
-
-
-@dataclass(frozen=True, kw_only=True)
-class Draws:
-    """What a run draws, known before its blocks are computed."""
-
-    doubts: Doubts
-    quantiles: Mapping[str, NDArray[np.float64]]
-    samples: Samples
-    layout: StateLayout
-
-
-@dataclass(frozen=True, kw_only=True)
-class SpreadFound:
-    """What the draws gave: totals of every draw, and their intervals."""
-
-    draws: Draws
-    drawn: Drawn
-    intervals: Intervals
-    n_states: int
-    seconds: float
 
 
 @dataclass(frozen=True)
@@ -92,6 +75,7 @@ class RunResult:
     seconds: float
     resumed_blocks: int
     spread: SpreadFound | None = None
+    ranking: Ranking | None = None
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -124,7 +108,7 @@ def run(
     threads = threads or os.cpu_count() or 1
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
-    draws = _make_draws(job, plan)
+    draws = make_draws(job, plan)
     layout = None if draws is None else draws.layout
     windows = blocks(plan.grid, block_shape(plan))
     with _locked(folder):
@@ -136,8 +120,10 @@ def run(
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (threads, progress))
         spread = None if draws is None else _run_draws(draws, plan, journal, found, threads)
-        _write_tables(found, spread, folder)
-        result = RunResult(folder, found, checks, time.monotonic() - began, resumed, spread)
+        ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
+        _write_tables(found, spread, ranking, folder)
+        seconds = time.monotonic() - began
+        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
         _write_record(job, plan, result)
         journal.clear()
     return result
@@ -204,46 +190,17 @@ def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
     }
 
 
-def _make_draws(job: Job, plan: Plan) -> Draws | None:
-    """Find what is uncertain and draw it; None where the job has no ``[uncertainty]``."""
-    if job.uncertainty is None:
-        return None
-    doubts = find_doubts(job, plan.scheme)
-    quantiles = draw_quantiles(job.uncertainty, doubts.keys, where=job.path)
-    samples = draw_samples(doubts, quantiles, job.uncertainty.draws)
-    layout = state_layout(plan)
-    if not layout.fits(plan.n_regions):
-        raise JobError(
-            f"{plan.n_regions} regions and {len(layout.names)} layers are too many for draws",
-            where=f"{job.path}, uncertainty",
-            fix="fewer regions, or no [uncertainty] table",
-        )
-    return Draws(doubts=doubts, quantiles=quantiles, samples=samples, layout=layout)
-
-
 def _run_draws(
     draws: Draws, plan: Plan, journal: Journal, found: Totals, threads: int
 ) -> SpreadFound:
     """Merge the states of the blocks and evaluate every draw on them."""
-    began = time.monotonic()
-    n_blocks = len(blocks(plan.grid, block_shape(plan)))
-    counts = _merge_blocks(journal, n_blocks)
-    states = to_states(counts, draws.layout, unit_exponent(plan.grid))
 
     def apply(work: list[Work]) -> list[NDArray[np.float64]]:
         tasks = [dask.delayed(one, pure=False)() for one in work]
         return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
 
-    drawn = propagate(
-        plan.scheme, states, draws.samples, found.consumption, KEPT, apply=apply
-    )
-    return SpreadFound(
-        draws=draws,
-        drawn=drawn,
-        intervals=find_intervals(drawn, len(ROCK_NAMES)),
-        n_states=counts.key.size,
-        seconds=time.monotonic() - began,
-    )
+    counts = _merge_blocks(journal, len(blocks(plan.grid, block_shape(plan))))
+    return find_spread(draws, plan, counts, found.consumption, apply)
 
 
 STATES_HELD = 2_000_000
@@ -260,7 +217,9 @@ def _merge_blocks(journal: Journal, n_blocks: int) -> StateCounts:
     return merge_states(merged)
 
 
-def _work(todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int) -> int:
+def _work(
+    todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int
+) -> int:
     """Compute one block and save it; the task that dask runs."""
     maps, sums, states = evaluate_block_states(todo[0], window, todo[1])
     factor = to_rate(1.0)
@@ -359,12 +318,18 @@ def _write_maps(
         write_map(folder / "maps", kind, plan.grid, pieces(kind), threads=threads, step=step)
 
 
-def _write_tables(found: Totals, spread: SpreadFound | None, folder: Path) -> None:
+def _write_tables(
+    found: Totals, spread: SpreadFound | None, ranking: Ranking | None, folder: Path
+) -> None:
     intervals = None if spread is None else spread.intervals
     names = with_intervals if spread is not None else tuple
     tables = folder / "tables"
     write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
     write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
+    if spread is not None:
+        write_sensitivity(tables / "sensitivity.csv", spread)
+    if ranking is not None:
+        write_ranking(tables / "ranking.csv", ranking, drawn=spread is not None)
 
 
 def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
@@ -379,6 +344,7 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
             "area_under_flag_km2": found.flagged,
         },
         "checks": dict(result.checks),
+        **_describe_doubts(job, result),
         "job": describe_job(job),
         **describe_plan(plan),
         "inputs": describe_inputs(job),
@@ -388,6 +354,19 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
+    """What the record says of draws and ranking, where the job asks for them."""
+    described: dict[str, Any] = {}
+    if job.uncertainty is not None and result.spread is not None:
+        described["uncertainty"] = describe_spread(job.uncertainty, result.spread)
+    if result.ranking is not None:
+        described["ranking"] = {
+            "left_out": dict(result.ranking.left_out),
+            "told_apart_from": CLEARLY_AHEAD,
+        }
+    return described
 
 
 def _plain(value: Any) -> Any:
@@ -446,6 +425,7 @@ def inspect(job: Job) -> Inspection:
     MapperError, or ManyProblemsError with every problem that can be found before the run.
     """
     plan = make_plan(job)
+    make_draws(job, plan)  # refuses spreads that cannot be drawn
     samples = {name: sample_layer(layer) for name, layer in plan.layers.items()}
     return Inspection(job, plan, samples)
 

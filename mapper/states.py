@@ -58,18 +58,19 @@ class Axis:
         if not self.is_log:
             steps = values * (2**PLACE_BITS / self.width)
             with np.errstate(invalid="ignore"):  # what is NaN has no result and is left out
-                return np.clip(steps, 0, most, out=steps).astype(np.int32)
+                return np.asarray(np.clip(steps, 0, most, out=steps), dtype=np.int32)
         shift = 23 - self.mantissa_bits - PLACE_BITS
         digits = np.maximum(values, 0.0).astype(np.float32).view(np.int32) >> shift
         digits -= np.int32(self._first - (1 << PLACE_BITS))
         np.clip(digits, 0, most, out=digits)
         digits[digits < 1 << PLACE_BITS] = 0
-        return digits
+        return np.asarray(digits, dtype=np.int32)
 
     def value(self, bins: Ints, place: Floats) -> Floats:
         """The value at a place inside a bin, place counted in 2^-PLACE_BITS of the bin."""
         if not self.is_log:
-            return (bins * 2.0**PLACE_BITS + place + 0.5) * (self.width / 2**PLACE_BITS)
+            steps = bins * 2.0**PLACE_BITS + place + 0.5
+            return np.asarray(steps * (self.width / 2**PLACE_BITS), dtype=np.float64)
         step = 1 << self.mantissa_bits
         at = np.maximum(bins - 1, 0)
         inside = at % step + (place + 0.5) / 2**PLACE_BITS
@@ -78,16 +79,18 @@ class Axis:
 
 
 AXES: Mapping[str, Axis] = {
-    "temperature": Axis(width=0.5, bits=10),  # K
-    "vegetation": Axis(width=0.05, bits=5),
-    "soil_shielding": Axis(width=0.05, bits=5),
-    "runoff": Axis(mantissa_bits=4, lowest=-6),  # mm yr-1: steps of 3 to 6 %
-    "precipitation": Axis(mantissa_bits=4, lowest=-6),
-    "evapotranspiration": Axis(mantissa_bits=4, lowest=-6),
-    "erosion": Axis(mantissa_bits=4, lowest=-10),  # t km-2 yr-1
-    "soil_co2": Axis(mantissa_bits=4, lowest=-20),  # atm
-    "reference_consumption": Axis(mantissa_bits=4, lowest=-20),  # mol m-2 yr-1
+    "temperature": Axis(width=1.0, bits=9),  # K
+    "vegetation": Axis(width=0.1, bits=4),
+    "soil_shielding": Axis(width=0.1, bits=4),
+    "runoff": Axis(mantissa_bits=3, lowest=-6, bits=8),  # mm yr-1: steps of 6 to 12 %
+    "precipitation": Axis(mantissa_bits=3, lowest=-6, bits=8),
+    "evapotranspiration": Axis(mantissa_bits=3, lowest=-6, bits=8),
+    "erosion": Axis(mantissa_bits=3, lowest=-10, bits=8),  # t km-2 yr-1
+    "soil_co2": Axis(mantissa_bits=3, lowest=-20, bits=8),  # atm
+    "reference_consumption": Axis(mantissa_bits=3, lowest=-20, bits=8),  # mol m-2 yr-1
 }
+"""Bins of each layer. Means inside a bin are kept, so that a width costs only curvature: on the
+island every total of a draw lies within 2e-4 of the same draw cell by cell (see the tests)."""
 
 
 class StateCounts(NamedTuple):
@@ -236,5 +239,5 @@ def to_states(counts: StateCounts, layout: StateLayout, exponent: int) -> States
         bins = rest & ((1 << axis.bits) - 1)
         inputs[name] = axis.value(bins, counts.place[:, at] / counts.area)
         rest = rest >> axis.bits
-    area = counts.area * area_step(exponent)
+    area = np.asarray(counts.area * area_step(exponent), dtype=np.float64)
     return States(rest // layout.n_rocks, rest % layout.n_rocks, area, inputs)

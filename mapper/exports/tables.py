@@ -140,7 +140,9 @@ def _rocks_of(
     for at, rock in enumerate(ROCK_NAMES):
         if found.rock_area[part, at].sum() > 0:
             spread = None if spreads is None else spreads[0][:, at]
-            rows.append(_row([name, rock], found.rock_area[part, at].sum(), found, (part, at), spread))
+            rows.append(
+                _row([name, rock], found.rock_area[part, at].sum(), found, (part, at), spread)
+            )
     unmapped = area - float(found.rock_area[part].sum())
     if unmapped > 1e-9 * max(area, 1e-300):
         each = 1 if spreads is None else 1 + len(LEVELS)

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Mapping
 from typing import Any
 
 import numpy as np
@@ -20,7 +19,9 @@ EDGE = 1e-12
 SOBOL_DIMENSIONS = 1024
 
 
-def draw_quantiles(spec: UncertaintySpec, keys: tuple[str, ...], *, where: str) -> dict[str, Floats]:
+def draw_quantiles(
+    spec: UncertaintySpec, keys: tuple[str, ...], *, where: str
+) -> dict[str, Floats]:
     """Quantiles of every quantity, each of shape (n_draws,), within 0 and 1.
 
     The sample of a quantity depends on seed, draws and its own name: it stays as it is when other
@@ -99,7 +100,7 @@ def _root(
         row, col = (names.index(name) for name in pair.between)
         matrix[row, col] = matrix[col, row] = pair.value
     try:
-        return np.linalg.cholesky(matrix)
+        return np.asarray(np.linalg.cholesky(matrix), dtype=np.float64)
     except np.linalg.LinAlgError:
         least = float(np.linalg.eigvalsh(matrix)[0])
         raise JobError(
@@ -108,5 +109,3 @@ def _root(
             where=place,
             fix="smaller values, or fewer pairs",
         ) from None
-
-

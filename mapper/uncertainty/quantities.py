@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Literal
@@ -12,11 +13,11 @@ from numpy.typing import NDArray
 from scipy.special import ndtri
 
 from mapper.accounting import drawdown_share
-from mapper.doubts import KEPT_SHARE, KEPT_SHARE_SOURCE, LAYER_SPREADS, UncertaintySpec
+from mapper.doubts import KEPT_SHARE, LAYER_SPREADS, UncertaintySpec
 from mapper.errors import JobError, LawError, MapperError, Problems
 from mapper.job import Job, ParameterSpec
 from mapper.laws import LAW_INPUTS, Grade, Parameter, Spread
-from mapper.rocks import ROCKS
+from mapper.rocks import ROCKS, Rock
 from mapper.scheme import Scheme
 
 Floats = NDArray[np.float64]
@@ -24,6 +25,28 @@ Floats = NDArray[np.float64]
 SET_BY_JOB = "the job"
 MOST_KEPT = 0.5
 """No more than half of what silicate rock takes up comes down as carbonate."""
+
+
+KEPT_SHARE_SOURCE = (
+    "this project's choice: sd 0.3 times the share of sodium and potassium in the charge (what is "
+    "not calcium or magnesium varies most among rocks of one name; compositions are typical ones, "
+    "from memory), and 0.3 more for rock that is part carbonate; reverse weathering, which would "
+    "keep a part of the sodium and potassium too, is within it"
+)
+
+
+def kept_spread(rock: Rock) -> Spread:
+    """The spread of the share that lasts where the job says none.
+
+    Examples
+    --------
+    >>> round(kept_spread(ROCKS["basalt"]).sd, 3), round(kept_spread(ROCKS["granite"]).sd, 3)
+    (0.044, 0.205)
+    """
+    of_cations = 0.3 * (1.0 - rock.calcium_magnesium_share)
+    of_carbonate = 0.3 if 0.0 < rock.silicate_share < 1.0 else 0.0
+    sd = math.hypot(of_cations, of_carbonate)
+    return Spread(kind="lognormal", sd=round(sd, 4), per_rock=True)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -43,11 +66,12 @@ class Quantity:
     def spread_text(self) -> str:
         """The spread as a reader would write it."""
         one = self.spread
+        unit = "" if self.unit == "1" else f" {self.unit}"
         if one.kind == "normal":
-            return f"normal, sd {one.sd:g} {self.unit}"
+            return f"normal, sd {one.sd:g}{unit}"
         if one.kind == "lognormal":
             return f"lognormal, sd of the logarithm {one.sd:g}"
-        return f"{one.kind} from {one.low:g} to {one.high:g} {self.unit}"
+        return f"{one.kind} from {one.low:g} to {one.high:g}{unit}"
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -183,12 +207,12 @@ class _Gathered:
             key=key, spread=spread, central=central, low=parameter.low, high=parameter.high
         )
 
-    def add_kept(self, rock: str, spread: Spread) -> None:
+    def add_kept(self, rock: str, said: Spread | None) -> None:
         share = drawdown_share(ROCKS[rock])
+        spread = kept_spread(ROCKS[rock]) if said is None else said
         if share == 0.0 or is_certain(spread):
             return
         key = f"{KEPT_SHARE}.{rock}" if spread.per_rock else KEPT_SHARE
-        default = spread == UncertaintySpec().kept_share
         quantity = Quantity(
             key=key,
             kind="accounting",
@@ -197,13 +221,11 @@ class _Gathered:
             meaning="factor on the share of the uptake that lasts",
             unit="1",
             spread=spread,
-            source=KEPT_SHARE_SOURCE if default else SET_BY_JOB,
-            grade="project" if default else "job",
+            source=KEPT_SHARE_SOURCE if said is None else SET_BY_JOB,
+            grade="project" if said is None else "job",
         )
         self.quantities.setdefault(key, quantity)
-        self.kept[rock] = Role(
-            key=key, spread=spread, central=1.0, low=0.0, high=MOST_KEPT / share
-        )
+        self.kept[rock] = Role(key=key, spread=spread, central=1.0, low=0.0, high=MOST_KEPT / share)
 
     def add_layer(self, name: str, spread: Spread | None) -> None:
         if spread is None or is_certain(spread):
