@@ -12,6 +12,13 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from mapper.doubts import (
+    RankingSpec,
+    UncertaintySpec,
+    ranking_spec,
+    spread_of,
+    uncertainty_spec,
+)
 from mapper.errors import JobError, MissingFileError, Problems
 from mapper.laws import Spread
 from mapper.rocks import ROCK_NAMES
@@ -74,11 +81,15 @@ class GridSpec:
 
 @dataclass(frozen=True, kw_only=True)
 class ParameterSpec:
-    """A parameter that the job sets: a value for all rocks, or one for each, and a spread."""
+    """A parameter that the job sets: a value for all rocks, or one for each, and a spread.
+
+    ``per_rock`` is None where the job does not say whether each rock is drawn for itself.
+    """
 
     value: float | None = None
     by_rock: Mapping[str, float] = field(default_factory=dict)
     spread: Spread | None = None
+    per_rock: bool | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -114,6 +125,8 @@ class Job:
     law: LawSpec
     regions: RegionsSpec | None
     folder: str
+    uncertainty: UncertaintySpec | None = None
+    ranking: RankingSpec | None = None
 
 
 def load_job(path: str | Path) -> Job:
@@ -142,7 +155,10 @@ def load_job(path: str | Path) -> Job:
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
         folder=_output_folder(root.table("output"), folder, path.stem),
+        uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
+        ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
     )
+    root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
     problems.raise_if_any()
     return job
@@ -244,6 +260,22 @@ class _Table:
             self.wrong(key, "a finite number", f"{key} = 1.0")
             return None
         return float(value)
+
+    def flag(self, key: str) -> bool | None:
+        value = self._take(key)
+        if value is None or isinstance(value, bool):
+            return value
+        self.wrong(key, "true or false", f"{key} = true")
+        return None
+
+    def whole(self, key: str, *, default: int, least: int) -> int:
+        value = self._take(key)
+        if value is None:
+            return default
+        if isinstance(value, bool) or not isinstance(value, int) or value < least:
+            self.wrong(key, f"a whole number of {least} or more", f"{key} = {max(default, least)}")
+            return default
+        return value
 
     def numbers(self, key: str, count: int | None, example: str) -> tuple[float, ...] | None:
         value = self._take(key)
@@ -378,10 +410,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
         return ParameterSpec(value=parent.number(name))
     table = parent.table(name)
     value = table.number("value")
-    sd = table.number("sd")
-    if sd is not None and sd < 0:
-        table.wrong("sd", "a spread of zero or more", "sd = 8.0")
-        sd = None
+    spread = spread_of(table, default="normal")
+    per_rock = table.flag("per_rock")
     rocks = table.table("by_rock")
     for rock in rocks.values:
         if rock not in ROCK_NAMES:
@@ -391,7 +421,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
     return ParameterSpec(
         value=value,
         by_rock={key: one for key, one in values.items() if one is not None},
-        spread=None if sd is None else Spread(kind="normal", sd=sd),
+        spread=spread,
+        per_rock=per_rock,
     )
 
 

@@ -19,8 +19,14 @@ from numpy.typing import NDArray
 
 from mapper.accounting import to_rate
 from mapper.cluster import connected, finished
-from mapper.engine import BlockSums, Plan, evaluate_block
+from mapper.engine import BlockSums, Plan, evaluate_block_states
 from mapper.errors import RunFolderError
+from mapper.exports.doubts import (
+    describe_spread,
+    rank_totals,
+    write_ranking,
+    write_sensitivity,
+)
 from mapper.exports.files import write_csv, write_json
 from mapper.exports.maps import MAPS, MapKind, write_map
 from mapper.exports.record import (
@@ -40,6 +46,7 @@ from mapper.exports.tables import (
     region_rows,
     rock_rows,
     to_totals,
+    with_intervals,
 )
 from mapper.grid import Grid, Window, blocks, parse_crs
 from mapper.job import Job
@@ -54,7 +61,11 @@ from mapper.planning import (
     make_plan,
     sample_layer,
 )
+from mapper.ranking import CLEARLY_AHEAD, Ranking
+from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
+from mapper.uncertainty.propagate import Work
+from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
@@ -86,6 +97,8 @@ class RunResult:
     checks: Mapping[str, float]
     seconds: float
     resumed_blocks: int
+    spread: SpreadFound | None = None
+    ranking: Ranking | None = None
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -118,17 +131,22 @@ def run(
     engine = engine or Engine()
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
+    draws = make_draws(job, plan)
+    layout = None if draws is None else draws.layout
     windows = blocks(plan.grid, block_shape(plan, engine.threads, engine.memory))
     with _locked(folder):
         journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
-        resumed = _compute_blocks(plan, windows, journal, engine, progress)
+        resumed = _compute_blocks((plan, layout), windows, journal, engine, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (engine.threads, progress))
-        _write_tables(found, folder)
-        result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
+        spread = None if draws is None else _run_draws(draws, plan, journal, found, engine.threads)
+        ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
+        _write_tables(found, spread, ranking, folder)
+        seconds = time.monotonic() - began
+        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
         _write_record(job, plan, result)
         journal.clear()
     return result
@@ -195,9 +213,38 @@ def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
     }
 
 
-def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
+def _run_draws(
+    draws: Draws, plan: Plan, journal: Journal, found: Totals, threads: int
+) -> SpreadFound:
+    """Merge the states of the blocks and evaluate every draw on them."""
+
+    def apply(work: list[Work]) -> list[NDArray[np.float64]]:
+        tasks = [dask.delayed(one, pure=False)() for one in work]
+        return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
+
+    counts = _merge_blocks(journal, len(blocks(plan.grid, block_shape(plan))))
+    return find_spread(draws, plan, counts, found.consumption, apply)
+
+
+STATES_HELD = 2_000_000
+"""Unmerged states in memory before they are merged."""
+
+
+def _merge_blocks(journal: Journal, n_blocks: int) -> StateCounts:
+    merged: list[StateCounts] = []
+    for index in range(n_blocks):
+        names = [f"state_{name}" for name in StateCounts._fields]
+        merged.append(StateCounts(*(journal.load(index, name) for name in names)))
+        if sum(part.key.size for part in merged) > STATES_HELD:
+            merged = [merge_states(merged)]
+    return merge_states(merged)
+
+
+def _work(
+    todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int
+) -> int:
     """Compute one block and save it; the task that dask runs."""
-    maps, sums = evaluate_block(plan, window)
+    maps, sums, states = evaluate_block_states(todo[0], window, todo[1])
     factor = to_rate(1.0)
     arrays: dict[str, NDArray[Any]] = {
         "map_consumption": (maps.consumption * factor).astype(np.float32),
@@ -205,6 +252,8 @@ def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
         "map_flags": maps.flags,
     }
     arrays |= {f"sum_{name}": values for name, values in sums._asdict().items()}
+    if states is not None:
+        arrays |= {f"state_{name}": values for name, values in states._asdict().items()}
     journal.save(index, arrays)
     return window.n_cells
 
@@ -226,7 +275,7 @@ class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
 
 
 def _compute_blocks(
-    plan: Plan,
+    what: tuple[Plan, StateLayout | None],
     windows: list[Window],
     journal: Journal,
     engine: Engine,
@@ -239,16 +288,16 @@ def _compute_blocks(
     progress("blocks", start, total)
     if engine.scheduler is not None:
         with connected(engine.scheduler, engine.threads) as client:
-            plan_there = client.scatter(plan, broadcast=True)
+            what_there = client.scatter(what, broadcast=True)
             futures = [
-                client.submit(_work, plan_there, windows[index], journal, index, pure=False)
+                client.submit(_work, what_there, windows[index], journal, index, pure=False)
                 for index in todo
             ]
             for cells in finished(futures):
                 start += cells
                 progress("blocks", start, total)
         return len(windows) - len(todo)
-    shared = dask.delayed(plan, name="plan", traverse=False)
+    shared = dask.delayed(what, name="plan", traverse=False)
     task = dask.delayed(_work, pure=False)
     tasks = [
         task(shared, windows[index], journal, index, dask_key_name=f"block-{index}")
@@ -308,9 +357,18 @@ def _write_one_map(
     return write_map(folder / "maps", kind, grid, pieces, threads=2)
 
 
-def _write_tables(found: Totals, folder: Path) -> None:
-    write_csv(folder / "tables" / "regions.csv", REGION_COLUMNS, region_rows(found))
-    write_csv(folder / "tables" / "regions_by_rock.csv", ROCK_COLUMNS, rock_rows(found))
+def _write_tables(
+    found: Totals, spread: SpreadFound | None, ranking: Ranking | None, folder: Path
+) -> None:
+    intervals = None if spread is None else spread.intervals
+    names = with_intervals if spread is not None else tuple
+    tables = folder / "tables"
+    write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
+    write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
+    if spread is not None:
+        write_sensitivity(tables / "sensitivity.csv", spread)
+    if ranking is not None:
+        write_ranking(tables / "ranking.csv", ranking, drawn=spread is not None)
 
 
 def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
@@ -325,6 +383,7 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
             "area_under_flag_km2": found.flagged,
         },
         "checks": dict(result.checks),
+        **_describe_doubts(job, result),
         "job": describe_job(job),
         **describe_plan(plan),
         "inputs": describe_inputs(job),
@@ -334,6 +393,19 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
+    """What the record says of draws and ranking, where the job asks for them."""
+    described: dict[str, Any] = {}
+    if job.uncertainty is not None and result.spread is not None:
+        described["uncertainty"] = describe_spread(job.uncertainty, result.spread)
+    if result.ranking is not None:
+        described["ranking"] = {
+            "left_out": dict(result.ranking.left_out),
+            "told_apart_from": CLEARLY_AHEAD,
+        }
+    return described
 
 
 def _plain(value: Any) -> Any:
@@ -391,6 +463,7 @@ def inspect(job: Job) -> Inspection:
     MapperError, or ManyProblemsError with every problem that can be found before the run.
     """
     plan = make_plan(job)
+    make_draws(job, plan)  # refuses spreads that cannot be drawn
     samples = {name: sample_layer(layer) for name, layer in plan.layers.items()}
     return Inspection(job, plan, samples)
 
