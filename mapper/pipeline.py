@@ -8,7 +8,7 @@ import os
 import resource
 import time
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -20,7 +20,9 @@ from numpy.typing import NDArray
 from mapper.accounting import to_rate
 from mapper.engine import BlockSums, Plan, evaluate_block
 from mapper.errors import RunFolderError
+from mapper.exports.contents import Contents
 from mapper.exports.files import write_csv, write_json
+from mapper.exports.handover import hand_over, list_files
 from mapper.exports.maps import MAPS, MapKind, write_map
 from mapper.exports.record import (
     CAUTIONS,
@@ -106,7 +108,10 @@ def run(
         _write_maps(plan, windows, journal, folder, (threads, progress))
         _write_tables(found, folder)
         result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
-        _write_record(job, plan, result)
+        contents = Contents(folder, plan, found, _record(job, plan, result))
+        hand_over(contents, job.write)
+        result = replace(result, seconds=time.monotonic() - began)
+        _write_record(contents, result)
         journal.clear()
     return result
 
@@ -270,9 +275,9 @@ def _write_tables(found: Totals, folder: Path) -> None:
     write_csv(folder / "tables" / "regions_by_rock.csv", ROCK_COLUMNS, rock_rows(found))
 
 
-def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
+def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
     found = result.totals
-    record = {
+    return {
         "title": job.title,
         "cautions": list(CAUTIONS),
         "result": {
@@ -287,6 +292,13 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
         "inputs": describe_inputs(job),
         "versions": versions(),
         "constants": constants(),
+    }
+
+
+def _write_record(contents: Contents, result: RunResult) -> None:
+    record = {
+        **contents.record,
+        "files": list_files(contents),
         "seconds": round(result.seconds, 3),
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
