@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import datetime
+import datetime as dt
 import mimetypes
 import os
 from pathlib import Path
@@ -99,8 +99,8 @@ def _today() -> str:
     """The date of the run, or that of SOURCE_DATE_EPOCH where builds must repeat."""
     epoch = os.environ.get("SOURCE_DATE_EPOCH", "")
     if epoch.isdigit():
-        return datetime.datetime.fromtimestamp(int(epoch), datetime.UTC).date().isoformat()
-    return datetime.datetime.now(datetime.UTC).date().isoformat()
+        return dt.datetime.fromtimestamp(int(epoch), dt.UTC).date().isoformat()
+    return dt.datetime.now(dt.UTC).date().isoformat()
 
 
 def _file(folder: Path, name: str) -> dict[str, Any]:

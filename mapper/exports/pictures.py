@@ -29,7 +29,7 @@ from mapper.exports.display import (
     ticks,
 )
 from mapper.exports.files import whole_file
-from mapper.exports.words import clean, shorten
+from mapper.exports.words import clean, pretty_unit, shorten
 
 INK, PALE, SEA = "#26231f", "#6d675f", "#f1efea"
 _HEADINGS = {
@@ -158,7 +158,7 @@ def _write_texts(
 ) -> None:
     left, height = place
     plain = {"parse_math": False, "x": left}
-    unit = f" [{shown.unit}]" if shown.unit else ""
+    unit = f" [{pretty_unit(shown.unit)}]" if shown.unit else ""
     title = shorten(contents.title, 80)
     figure.text(y=1 - 0.30 / height, s=title, size=12.5, weight="bold", color=INK, **plain)
     figure.text(y=1 - 0.55 / height, s=heading(shown) + unit, size=9, color=INK, **plain)
@@ -227,6 +227,6 @@ def _legend(shown: DisplayMap) -> Any:
         return figure
     figure = _figure(1.7, 3.0)
     figure.text(0.12, 0.965, shown.name, size=8.5, weight="bold", color=INK, va="top")
-    figure.text(0.12, 0.91, shown.unit, size=7, color=PALE, va="top", parse_math=False)
+    figure.text(0.12, 0.91, pretty_unit(shown.unit), size=7, color=PALE, va="top", parse_math=False)
     _colour_bar(figure.add_axes((0.14, 0.05, 0.16, 0.70)), shown)
     return figure

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import xml.etree.ElementTree as Tree
+import xml.etree.ElementTree as ET
 
 from mapper.exports.colours import (
     Stretch,
@@ -60,27 +60,28 @@ def write_styles(contents: Contents, display: Display) -> None:
 
 def style_xml(shown: DisplayMap, entries: list[Entry], title: str) -> bytes:
     """The style of one map as XML."""
-    root = Tree.Element("StyledLayerDescriptor", {"version": "1.0.0", **_PLACES})
-    layer = Tree.SubElement(root, "NamedLayer")
+    root = ET.Element("StyledLayerDescriptor", {"version": "1.0.0", **_PLACES})
+    layer = ET.SubElement(root, "NamedLayer")
     _text(layer, "Name", shown.name)
-    style = Tree.SubElement(layer, "UserStyle")
+    style = ET.SubElement(layer, "UserStyle")
     _text(style, "Name", f"saprolite_{shown.name}")
     _text(style, "Title", f"{shown.name}{f' [{shown.unit}]' if shown.unit else ''}")
     _text(style, "Abstract", f"{shown.long_name}. {title}")
     _text(style, "IsDefault", "1")
-    rule = Tree.SubElement(Tree.SubElement(style, "FeatureTypeStyle"), "Rule")
-    symbol = Tree.SubElement(rule, "RasterSymbolizer")
+    rule = ET.SubElement(ET.SubElement(style, "FeatureTypeStyle"), "Rule")
+    symbol = ET.SubElement(rule, "RasterSymbolizer")
     _text(symbol, "Opacity", "1.0")
-    ramp = Tree.SubElement(symbol, "ColorMap")
+    ramp = ET.SubElement(symbol, "ColorMap")
     for value, colour, label in entries:
-        Tree.SubElement(
+        ET.SubElement(
             ramp,
             "ColorMapEntry",
             {"color": colour, "quantity": f"{value:.10g}", "label": clean(label), "opacity": "1.0"},
         )
-    Tree.indent(root)
-    return Tree.tostring(root, encoding="utf-8", xml_declaration=True) + b"\n"
+    ET.indent(root)
+    text: bytes = ET.tostring(root, encoding="utf-8", xml_declaration=True)
+    return text + b"\n"
 
 
-def _text(parent: Tree.Element, name: str, text: str) -> None:
-    Tree.SubElement(parent, name).text = clean(text)
+def _text(parent: ET.Element, name: str, text: str) -> None:
+    ET.SubElement(parent, name).text = clean(text)

@@ -43,6 +43,18 @@ def slug(text: Any) -> str:
     return re.sub(r"[^a-z0-9]+", "-", str(text).lower()).strip("-")[:60] or "run"
 
 
+def about(value: float, digits: int = 3) -> str:
+    """A number rounded to ``digits`` significant digits, for a sentence."""
+    return number(float(f"{value:.{digits}g}"), digits)
+
+
+def pretty_unit(unit: str) -> str:
+    """A unit with raised exponents and a lowered 2 in CO2."""
+    raised = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+    text = re.sub(r"(?<=[a-z])(-?\d+)\b", lambda found: found[1].translate(raised), unit)
+    return text.replace("CO2", "CO₂")
+
+
 def number(value: float, digits: int = 4) -> str:
     """A number to read: about ``digits`` significant digits, thousands parted."""
     if not math.isfinite(value):

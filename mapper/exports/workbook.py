@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-import datetime
+import datetime as dt
 import math
 import re
 from collections.abc import Iterator, Mapping
@@ -15,7 +15,7 @@ from mapper.exports.words import clean
 
 _CELL_LIMIT = 32_000  # characters a spreadsheet cell can hold
 _ROW_LIMIT = 1_000_000
-_FIXED_DATE = datetime.datetime(2000, 1, 1, tzinfo=datetime.UTC).replace(tzinfo=None)
+_FIXED_DATE = dt.datetime(2000, 1, 1, tzinfo=dt.UTC).replace(tzinfo=None)
 
 COLUMN_MEANING: Mapping[str, tuple[str, str]] = {
     "region": ("", "id of the region; 'outside' lies in none, 'all' is the whole grid"),

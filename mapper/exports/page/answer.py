@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from mapper.exports.contents import Contents
 from mapper.exports.page.markup import paragraph, percent
-from mapper.exports.words import escape, isolate, number, shorten
+from mapper.exports.words import about, escape, isolate, number, shorten
 
 
 def head(contents: Contents) -> str:
@@ -23,7 +23,7 @@ def interval(row: dict[str, float], column: str, digits: int = 3) -> str:
     low, high = row.get(f"{column}_p05"), row.get(f"{column}_p95")
     if low is None or high is None or low != low or high != high:  # noqa: PLR0124 - NaN
         return ""
-    return f"{number(low, digits)} to {number(high, digits)}"
+    return f"{about(low, digits)} to {about(high, digits)}"
 
 
 def _answer(contents: Contents) -> str:
@@ -32,7 +32,7 @@ def _answer(contents: Contents) -> str:
     sure = f" (90 % interval {span})" if span else ""
     return (
         "Rock weathering here keeps about "
-        f"<strong>{number(row['drawdown_t_per_yr'], 3)} t of CO<sub>2</sub> a year</strong>{sure} "
+        f"<strong>{about(row['drawdown_t_per_yr'])} t of CO<sub>2</sub> a year</strong>{sure} "
         "out of the air in the long term."
     )
 
@@ -40,9 +40,9 @@ def _answer(contents: Contents) -> str:
 def _second(contents: Contents) -> str:
     row = contents.regions.by_region["all"]
     span = interval(row, "consumption_t_per_yr")
-    short = number(row["consumption_t_per_yr"], 3) + (f" (90 % interval {span})" if span else "")
+    short = about(row["consumption_t_per_yr"]) + (f" (90 % interval {span})" if span else "")
     text = (
-        f"In the short term it takes up {short} t; most of the difference returns to the air when "
+        f"In the short term it takes up {short} t; the rest returns to the air when "
         "carbonate forms in the sea. "
     )
     if not contents.has_draws:

@@ -35,7 +35,7 @@ from mapper.exports.display import (
 )
 from mapper.exports.page.markup import paragraph
 from mapper.exports.pictures import scale_index
-from mapper.exports.words import escape, number
+from mapper.exports.words import escape, number, pretty_unit
 from mapper.rocks import ROCK_NAMES
 
 WIDTH = 1000.0
@@ -166,7 +166,7 @@ def map_data(contents: Contents, display: Display) -> dict[str, Any]:
             {
                 "name": name,
                 "label": label(shown),
-                "unit": shown.unit,
+                "unit": pretty_unit(shown.unit),
                 "kind": "rate" if shown.stretch is not None else name,
                 "data": packed_values(shown),
             }
@@ -191,13 +191,12 @@ def _ramp(shown: DisplayMap) -> str:
     stops = ",".join(hex_at(colours, at / 16) for at in range(17))
     places = ticks(span.low, span.high, 5)
     marks = "".join(
-        f'<span style="left:{100 * (one - span.low) / (span.high - span.low):.2f}%">'
-        f"{number(one, 3)}</span>"
+        f'<span style="left:{100 * (one - span.low) / (span.high - span.low):.2f}%">{one:g}</span>'
         for one in places
     )
     above = f"; the largest cell has {number(span.largest, 3)}" if span.largest > span.high else ""
     return (
-        f"<p>{escape(shown.long_name)} [{escape(shown.unit)}]{above}</p>"
+        f"<p>{escape(shown.long_name)} [{escape(pretty_unit(shown.unit))}]{above}</p>"
         f'<div class="ramp" style="background:linear-gradient(90deg,{stops})"></div>'
         f'<div class="marks">{marks}</div>'
     )

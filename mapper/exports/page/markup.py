@@ -25,7 +25,7 @@ class Cell:
         sort = "" if self.sort is None else f' data-v="{escape(_sortable(self.sort))}"'
         bar = ""
         if self.share is not None and math.isfinite(self.share):
-            bar = f' style="--share:{100 * min(max(self.share, 0.0), 1.0):.2f}%"'
+            bar = f' style="--share:{min(max(self.share, 0.0), 1.0):.4f}"'
         return f"<{tag}{name}{sort}{bar}>{self.html}</{tag[:2]}>"
 
 
@@ -97,11 +97,18 @@ def bullets(items: Iterable[str]) -> str:
     return "<ul>" + "".join(f"<li>{item}</li>" for item in items) + "</ul>"
 
 
+def share_words(part: float, whole: float) -> str:
+    """A share in a sentence."""
+    return percent(part, whole).replace("< ", "less than ")
+
+
 def percent(part: float, whole: float) -> str:
-    """A share in words fit for a sentence."""
+    """A share as text for a table."""
     if not whole or not math.isfinite(part / whole):
         return "0 %"
     share = 100.0 * part / whole
+    if share == 0:
+        return "0 %"
     if 0 < share < 0.1:
-        return "less than 0.1 %"
+        return "< 0.1 %"
     return f"{share:.1f} %" if share < 10 or 90 < share < 100 else f"{share:.0f} %"

@@ -59,7 +59,7 @@
     line.append(element("b", data.regions[r]));
     if (row) {
       const read = (n) => row.cells[n].firstChild.textContent;
-      line.append(": drawdown " + read(3) + " t CO2 per year, " + read(2) + " t per km² and year, rank " + read(0));
+      line.append(": drawdown " + read(3) + " t CO₂ per year, " + read(2) + " t per km² and year, rank " + read(0));
     }
     return line;
   }

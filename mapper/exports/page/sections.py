@@ -15,6 +15,7 @@ from mapper.exports.page.markup import (
     paragraph,
     percent,
     section,
+    share_words,
     table,
     text_cell,
 )
@@ -47,8 +48,8 @@ def _leading(whole: list[Row], every: Row) -> str:
     rock_area = sum(row[AREA] for row in whole)
     text = (
         f"<strong>{escape(first['rock'].capitalize())}</strong> lies under "
-        f"{percent(first[AREA], rock_area)} of the mapped rock and gives "
-        f"{percent(first[TOTAL], every[TOTAL])} of the long-term drawdown."
+        f"{share_words(first[AREA], rock_area)} of the mapped rock and gives "
+        f"{share_words(first[TOTAL], every[TOTAL])} of the long-term drawdown."
     )
     back = [row for row in whole if row[TOTAL] <= 0 < row[SHORT]]
     if back:
@@ -170,12 +171,13 @@ def limits_section(contents: Contents) -> str:
     every = contents.regions.by_region["all"]
     rock = float(contents.found.rock_area.sum())
     outside, valid = every["outside_law_range_km2"], every["valid_area_km2"]
+    gap = rock - valid
     text = (
-        f"<strong>{number(outside, 3)} km²</strong> ({percent(outside, valid)} of the area with a "
-        "result) lie outside the range that their law was fitted in: they are computed and counted, "
-        f"and marked on the map. <strong>{number(rock - valid, 3)} km²</strong> of mapped rock "
-        f"({percent(rock - valid, rock)}) have no result, because a layer that the law reads has "
-        "no data there; they count as nothing in every total."
+        f"<strong>{number(outside, 3)} km²</strong> ({share_words(outside, valid)} of the area "
+        "with a result) lie outside the range that their law was fitted in: they are computed and "
+        f"counted, and marked on the map. <strong>{number(gap, 3)} km²</strong> of mapped rock "
+        f"({share_words(gap, rock)}) have no result, because a layer that the law reads has no "
+        "data there; they count as nothing in every total."
     )
     return section(
         "limits",

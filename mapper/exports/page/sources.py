@@ -9,7 +9,6 @@ from mapper.exports.page.answer import interval
 from mapper.exports.page.markup import (
     Cell,
     bullets,
-    figure_cell,
     paragraph,
     section,
     table,
@@ -85,7 +84,7 @@ def _files(contents: Contents) -> str:
     lines = [
         [
             text_cell(isolate(shorten(one["name"], 80))),
-            figure_cell(float(one["bytes"]), 9),
+            Cell(f"{one['bytes']:,}", float(one["bytes"]), numeric=True),
             text_cell(f"<code>{escape(one['sha256'][:16])}…</code>"),
         ]
         for one in contents.record["inputs"]
@@ -118,7 +117,7 @@ def _parameters(contents: Contents) -> str:
         lines.append(
             [
                 text_cell(f"{escape(name.replace('_', ' '))}<small>{escape(law)}</small>"),
-                Cell(f"{number(value, 5)} <small>{escape(unit)}</small>", value, numeric=True),
+                Cell(f"{value:.5g} <small>{escape(unit)}</small>", value, numeric=True),
                 text_cell(escape(", ".join(rocks))),
                 text_cell(escape(_GRADE.get(grade, grade))),
                 text_cell(escape(source)),
