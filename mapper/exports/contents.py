@@ -17,6 +17,9 @@ from mapper.exports.tables import Totals
 OTHER_ROWS = ("outside", "all")
 """Rows of the regions table that are no region."""
 
+SET_BY_JOB = "job"
+"""The grade of a number that the job sets; the others are those of `mapper.laws.law.Grade`."""
+
 _SORTED_FIRST = ("drawdown", "consumption")
 
 
@@ -85,6 +88,25 @@ class Contents:
         rest = [name for name in paths if name not in (*first, "flags")]
         last = ["flags"] if "flags" in paths else []
         return {name: paths[name] for name in (*first, *rest, *last)}
+
+
+def parameter_rows(record: Mapping[str, Any]) -> Iterator[dict[str, Any]]:
+    """Every parameter of every rock's law, with its source; the job is the source of what it sets.
+
+    Keys: rock, law, parameter, value, unit, grade, source.
+    """
+    for rock, law in record["laws"].items():
+        for name, one in law["parameters"].items():
+            changed = [text for text in law["changed"] if text.startswith(f"{name} = ")]
+            yield {
+                "rock": rock,
+                "law": law["law"],
+                "parameter": name,
+                "value": one["value"],
+                "unit": one["unit"],
+                "grade": SET_BY_JOB if changed else one["grade"],
+                "source": f"the job: {changed[0]}" if changed else one["source"],
+            }
 
 
 def read_table(path: Path, spelled: Mapping[str, str] | None = None) -> Table:

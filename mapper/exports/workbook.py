@@ -9,7 +9,7 @@ from collections.abc import Iterator, Mapping
 from importlib import import_module
 from typing import Any
 
-from mapper.exports.contents import Contents, Table
+from mapper.exports.contents import Contents, Table, parameter_rows
 from mapper.exports.files import safe_cell, whole_file
 from mapper.exports.words import clean
 
@@ -113,6 +113,5 @@ def _units(contents: Contents) -> Iterator[tuple[str, ...]]:
 
 
 def _sources(contents: Contents) -> Iterator[tuple[Any, ...]]:
-    for rock, law in contents.record["laws"].items():
-        for name, one in law["parameters"].items():
-            yield (rock, law["law"], name, one["value"], one["unit"], one["grade"], one["source"])
+    for one in parameter_rows(contents.record):
+        yield tuple(one.values())

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from mapper.exports.contents import Contents
+from mapper.exports.contents import SET_BY_JOB, Contents, parameter_rows
 from mapper.exports.page.answer import interval
 from mapper.exports.page.markup import (
     Cell,
@@ -14,7 +14,7 @@ from mapper.exports.page.markup import (
     table,
     text_cell,
 )
-from mapper.exports.words import escape, isolate, number, shorten
+from mapper.exports.words import escape, isolate, number, pretty_unit, shorten
 
 _HOW = {
     "same": "on the grid’s own cells",
@@ -30,6 +30,7 @@ _GRADE = {
     "memory": "from memory, not seen",
     "computed": "computed from the formula",
     "project": "this project’s own choice",
+    SET_BY_JOB: "set by the job",
 }
 
 
@@ -104,28 +105,33 @@ def _law_words(contents: Contents) -> str:
 
 
 def _parameters(contents: Contents) -> str:
-    """Parameters, rocks with the same value in one row."""
-    groups: dict[tuple[Any, ...], list[str]] = {}
-    for rock, law in contents.record["laws"].items():
-        for name, one in law["parameters"].items():
-            key = (law["law"], name, one["value"], one["unit"], one["grade"], one["source"])
-            groups.setdefault(key, []).append(rock)
-    lines = []
-    for (law, name, value, unit, grade, source), rocks in sorted(
-        groups.items(), key=lambda item: item[0][:3]
-    ):
-        lines.append(
-            [
-                text_cell(f"{escape(name.replace('_', ' '))}<small>{escape(law)}</small>"),
-                Cell(f"{value:.5g} <small>{escape(unit)}</small>", value, numeric=True),
-                text_cell(escape(", ".join(rocks))),
-                text_cell(escape(_GRADE.get(grade, grade))),
-                text_cell(escape(source)),
-            ]
-        )
-    heads = [("Parameter", False), ("Value", True), ("Rocks", False), ("Grade", False)]
-    heads += [("Source", False)]
-    return table("Parameters", heads, lines, kind="prose")
+    """A row for each law's parameter and source; values with the rocks that they hold for."""
+    groups: dict[tuple[str, ...], dict[float, list[str]]] = {}
+    for one in parameter_rows(contents.record):
+        key = (one["law"], one["parameter"], one["unit"], one["grade"], one["source"])
+        groups.setdefault(key, {}).setdefault(one["value"], []).append(one["rock"])
+    lines = [
+        [
+            text_cell(
+                f"{escape(name.replace('_', ' '))}<small>{escape(pretty_unit(unit))}</small>"
+                f"<small>{escape(law)}</small>"
+            ),
+            text_cell(_values(values)),
+            text_cell(escape(_GRADE.get(grade, grade))),
+            text_cell(escape(source)),
+        ]
+        for (law, name, unit, grade, source), values in sorted(groups.items())
+    ]
+    heads = ["Parameter", "Value, and rocks it holds for", "Grade", "Source"]
+    return table("Parameters", [(head, False) for head in heads], lines, kind="prose")
+
+
+def _values(values: dict[float, list[str]]) -> str:
+    items = "".join(
+        f"<li><b>{value:.5g}</b> {escape(', '.join(rocks))}</li>"
+        for value, rocks in sorted(values.items())
+    )
+    return f'<ul class="values">{items}</ul>'
 
 
 def cautions_section(contents: Contents) -> str:
