@@ -64,6 +64,9 @@ def _parser() -> argparse.ArgumentParser:
     inspect = commands.add_parser("inspect", help="look at a job before it runs, problems and all")
     inspect.add_argument("job", metavar="JOB", help="the job file (TOML)")
     inspect.set_defaults(action=_inspect)
+    verify = commands.add_parser("verify", help="check that a run folder is what it claims")
+    verify.add_argument("folder", metavar="RUN", help="the folder of a finished run")
+    verify.set_defaults(action=_verify)
     laws = commands.add_parser("laws", help="list the rate laws, or show one")
     laws.add_argument("name", nargs="?", metavar="NAME", help="a law to show in full")
     laws.set_defaults(action=_laws)
@@ -185,6 +188,16 @@ def _inspect(chosen: argparse.Namespace) -> int:
 
     report = inspect(load_job(chosen.job))
     print("\n".join(report.lines()))  # noqa: T201
+    return DONE
+
+
+def _verify(chosen: argparse.Namespace) -> int:
+    from mapper.exports.verify import verify  # noqa: PLC0415
+
+    found = verify(chosen.folder)
+    print("\n".join(f"checked  {line}" for line in found.checked))  # noqa: T201
+    found.raise_if_different()
+    print("The folder is what its record claims.")  # noqa: T201
     return DONE
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import json
 import math
 import os
 import re
@@ -40,6 +41,8 @@ VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
 RUNOFF_METHODS = ("turc-1954", "turc-pike")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
+WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
+ALSO = ("netcdf", "geoparquet")
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -127,6 +130,7 @@ class Job:
     folder: str
     uncertainty: UncertaintySpec | None = None
     ranking: RankingSpec | None = None
+    write: tuple[str, ...] = WRITTEN
 
 
 def load_job(path: str | Path) -> Job:
@@ -154,9 +158,9 @@ def load_job(path: str | Path) -> Job:
         water_method=root.table("water").choice("method", RUNOFF_METHODS, default="turc-1954"),
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
-        folder=_output_folder(root.table("output"), folder, path.stem),
         uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
         ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
+        **_output(root.table("output"), folder, path.stem),
     )
     root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
@@ -248,6 +252,19 @@ class _Table:
             self.wrong(key, "one of " + ", ".join(among), f'{key} = "{near}"')
             return default
         return value
+
+    def choices(
+        self, key: str, among: tuple[str, ...], *, default: tuple[str, ...]
+    ) -> tuple[str, ...]:
+        value = self._take(key)
+        if value is None:
+            return default
+        listed = value if isinstance(value, list) else [value]
+        if any(one not in among for one in listed):
+            needed = "a list of " + ", ".join(among)
+            self.wrong(key, needed, f"{key} = {json.dumps(list(among))}")
+            return default
+        return tuple(listed)
 
     def number(self, key: str) -> float | None:
         value = self._take(key)
@@ -436,6 +453,8 @@ def _regions_spec(table: _Table, folder: Path) -> RegionsSpec:
     )
 
 
-def _output_folder(table: _Table, folder: Path, stem: str) -> str:
+def _output(table: _Table, folder: Path, stem: str) -> dict[str, Any]:
     text = table.text("folder", default=f"out/{stem}")
-    return _absolute(text, folder, table)
+    write = table.choices("write", WRITTEN, default=WRITTEN)
+    also = table.choices("also", ALSO, default=())
+    return {"folder": _absolute(text, folder, table), "write": (*write, *also)}

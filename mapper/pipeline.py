@@ -8,7 +8,7 @@ import os
 import resource
 import time
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
@@ -21,6 +21,7 @@ from mapper.accounting import to_rate
 from mapper.cluster import connected, finished
 from mapper.engine import BlockSums, Plan, evaluate_block_states
 from mapper.errors import RunFolderError
+from mapper.exports.contents import Contents
 from mapper.exports.doubts import (
     describe_spread,
     rank_totals,
@@ -28,6 +29,7 @@ from mapper.exports.doubts import (
     write_sensitivity,
 )
 from mapper.exports.files import write_csv, write_json
+from mapper.exports.handover import hand_over, list_files
 from mapper.exports.maps import MAPS, MapKind, write_map
 from mapper.exports.record import (
     CAUTIONS,
@@ -147,7 +149,10 @@ def run(
         _write_tables(found, spread, ranking, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
-        _write_record(job, plan, result)
+        contents = Contents(folder, plan, found, _record(job, plan, result))
+        hand_over(contents, job.write)
+        result = replace(result, seconds=time.monotonic() - began)
+        _write_record(contents, result)
         journal.clear()
     return result
 
@@ -371,9 +376,9 @@ def _write_tables(
         write_ranking(tables / "ranking.csv", ranking, drawn=spread is not None)
 
 
-def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
+def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
     found = result.totals
-    record = {
+    return {
         "title": job.title,
         "cautions": list(CAUTIONS),
         "result": {
@@ -389,6 +394,13 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
         "inputs": describe_inputs(job),
         "versions": versions(),
         "constants": constants(),
+    }
+
+
+def _write_record(contents: Contents, result: RunResult) -> None:
+    record = {
+        **contents.record,
+        "files": list_files(contents),
         "seconds": round(result.seconds, 3),
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
