@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import struct
 from pathlib import Path
 from typing import Any, NamedTuple
 
@@ -70,3 +71,33 @@ def cut_short(dataset: Any, band: int, block: Block, *, where: str) -> FileForma
 def _block_counts(dataset: Any, band: int) -> tuple[int, int]:
     height, width = dataset.block_shapes[band - 1]
     return -(-dataset.height // height), -(-dataset.width // width)
+
+
+_ROWS_PER_STRIP = 278
+
+
+def rows_per_strip(path: str) -> int | None:
+    """Rows in a strip as the file's first directory states them; None where it does not.
+
+    GDAL reads a very large compressed strip row by row and calls each row a block, but must
+    unpack all rows before the one it is asked for.
+    """
+    with Path(path).open("rb") as stream:
+        head = stream.read(16)
+        order = "<" if head[:2] == b"II" else ">"
+        big = struct.unpack(f"{order}H", head[2:4])[0] == 43
+        start = (
+            struct.unpack(f"{order}Q", head[8:16]) if big else struct.unpack(f"{order}I", head[4:8])
+        )
+        stream.seek(start[0])
+        count = stream.read(8 if big else 2)
+        n = struct.unpack(f"{order}{'Q' if big else 'H'}", count)[0]
+        size = 20 if big else 12
+        entries = stream.read(size * min(n, 1000))
+    for at in range(0, len(entries) - size + 1, size):
+        tag, kind = struct.unpack(f"{order}HH", entries[at : at + 4])
+        if tag == _ROWS_PER_STRIP:
+            value = entries[at + size - (8 if big else 4) : at + size]
+            width, code = (2, "H") if kind == 3 else (4, "I")
+            return int(struct.unpack(f"{order}{code}", value[:width])[0])
+    return None

@@ -21,7 +21,7 @@ from mapper.errors import FileFormatError, GridError
 from mapper.grid import parse_crs
 from mapper.job import LayerSpec
 from mapper.layers.axis import around_the_earth, inside_the_poles, one_turn
-from mapper.layers.damage import blocks_in, refuse_cut_file
+from mapper.layers.damage import blocks_in, refuse_cut_file, rows_per_strip
 from mapper.layers.source import Source, north_up_axes, take
 
 MOST_CELLS = 2**37
@@ -107,6 +107,8 @@ def _refuse_giants(dataset: Any, spec: LayerSpec) -> None:
             fix="a file with the one band that is needed",
         )
     height, width = dataset.block_shapes[0]
+    if height == 1 and dataset.compression is not None:
+        height = min(rows_per_strip(spec.path) or 1, dataset.height)
     block_bytes = height * width * np.dtype(_plain_type(dataset.dtypes[0])).itemsize
     if block_bytes > MOST_BLOCK_BYTES:
         raise FileFormatError(

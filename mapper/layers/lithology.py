@@ -9,8 +9,8 @@ from typing import Any, NamedTuple
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.coverage import Polygons, cover_window
-from mapper.errors import LegendError, ValuesError
+from mapper.coverage import OVERLAP_TOLERANCE, Polygons, cover_window
+from mapper.errors import LegendError, RegionError, ValuesError
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import LayerSpec
 from mapper.layers.layer import How, axis_plans
@@ -77,7 +77,9 @@ class Lithology:
         """Cells, position of the code in the names, share; and the names."""
         if self.polygons is not None:
             cover = cover_window(self.polygons, self.grid, window)
-            return *cover.entries(), self.polygons.names
+            entries = cover.entries()
+            _refuse_overlap(entries, self, window)
+            return *entries, self.polygons.names
         if self.source is None:  # pragma: no cover - one of the two is always there
             raise AssertionError
         cells, codes, shares = self._from_raster(self.source, window)
@@ -131,6 +133,26 @@ class Lithology:
         return [
             [(ROCK_NAMES.index(rock), share) for rock, share in mixture or ()] for mixture in known
         ]
+
+
+def _refuse_overlap(
+    entries: tuple[Ints, Ints, Floats], lithology: Lithology, window: Window
+) -> None:
+    cells, names, shares = entries
+    covered = np.bincount(cells, weights=shares, minlength=window.n_cells)
+    at = int(np.argmax(covered))
+    if covered[at] <= 1.0 + OVERLAP_TOLERANCE or lithology.polygons is None:
+        return
+    row, col = divmod(at, window.n_cols)
+    x = float(lithology.grid.x_centres(window.col + col, window.col + col + 1)[0])
+    y = float(lithology.grid.y_centres(window.row + row, window.row + row + 1)[0])
+    here = sorted({lithology.polygons.names[one] for one in names[cells == at]})
+    raise RegionError(
+        f"geology polygons overlap: they cover {covered[at]:.3f} of the cell at x {x:g}, y {y:g} "
+        f"({', '.join(here[:4])})",
+        where=lithology.spec.where,
+        fix="polygons that do not overlap; ground under two of them would count twice",
+    )
 
 
 def _refuse_fractions(raw: NDArray[Any], valid: NDArray[np.bool_], spec: LayerSpec) -> None:

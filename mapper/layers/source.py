@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from mapper.errors import FileFormatError, MissingFileError, ValuesError
 from mapper.layers.axis import Axis, AxisPlan, regular_axis
 
-FileKind = Literal["geotiff", "netcdf", "vector"]
+FileKind = Literal["geotiff", "netcdf", "zarr", "vector", "tiles"]
 
 UNTAGGED_FILLS = (9.969209968386869e36,)
 """Values that mean "never written" in NetCDF files even where no tag says so."""

@@ -76,9 +76,15 @@ class Bench:
         """A layer opened on the grid of another file, or on its own."""
         job = mapper.load_job(self.job({layer: {"path": str(path), **keys}}))
         source = open_source(job.layers[layer])
-        base = source if grid is None else open_source(mapper.load_job(
-            self.job({layer: {"path": str(grid), "units": keys.get("units", "K")}})
-        ).layers[layer])
+        base = (
+            source
+            if grid is None
+            else open_source(
+                mapper.load_job(
+                    self.job({layer: {"path": str(grid), "units": keys.get("units", "K")}})
+                ).layers[layer]
+            )
+        )
         return open_layer(job.layers[layer], source, source_grid(base, where="grid"))
 
     def job(self, layers: dict[str, Any] | None = None, *, extra: str = "", **tables: Any) -> Path:

@@ -11,7 +11,7 @@ import rasterio
 from rasterio.transform import from_origin
 
 import mapper
-from mapper.errors import FileFormatError, GridError, MapperError, MissingFileError
+from mapper.errors import FileFormatError, MapperError, MissingFileError
 from mapper.grid import Window
 from mapper.layers.layer import open_source
 
@@ -250,9 +250,7 @@ def test_every_problem_of_a_job_is_told_at_once(bench):
     bad = bench.tif("t.tif", np.full((4, 6), 280.0, np.float32))
     html = bench.text("r.tif", "<html>")
     with pytest.raises(MapperError) as refused:
-        bench.plan(
-            {"temperature": {"path": str(bad)}, "runoff": {"path": str(html)}}
-        )
+        bench.plan({"temperature": {"path": str(bad)}, "runoff": {"path": str(html)}})
     text = str(refused.value)
     assert "no unit" in text
     assert "HTML" in text

@@ -155,9 +155,7 @@ def test_18_a_layer_that_covers_part_of_the_grid_leaves_the_rest_without_data(be
 
 
 def test_18_a_layer_that_misses_the_grid_is_refused_with_both_extents(bench):
-    far = bench.tif(
-        "far.tif", RAMP, unit="mm yr-1", transform=from_origin(100, 4, 1, 1)
-    )
+    far = bench.tif("far.tif", RAMP, unit="mm yr-1", transform=from_origin(100, 4, 1, 1))
     with pytest.raises(GridError, match=r"x 100\.\.106.*against x 0\.\.6"):
         bench.plan({"runoff": {"path": str(far)}})
 

@@ -235,9 +235,7 @@ def test_38_fractional_codes_are_refused(bench):
 @pytest.mark.parametrize(
     ("value", "unit", "seen"), [(290.0, "degC", "563.15"), (15.0, "K", "15"), (5.0, "K", "5")]
 )
-def test_39_a_temperature_under_the_wrong_unit_is_refused_with_the_median(
-    bench, value, unit, seen
-):
+def test_39_a_temperature_under_the_wrong_unit_is_refused_with_the_median(bench, value, unit, seen):
     path = bench.tif("t.tif", np.full((4, 6), value, np.float32), unit=unit)
     with pytest.raises(ValuesError, match=f"median {seen}"):
         bench.layer("temperature", path).values(WHOLE)
