@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+import rasterio
 from affine import Affine
 from rasterio.transform import from_origin
 
@@ -92,8 +93,6 @@ def test_06_another_datum_is_transformed_and_the_shift_is_told(bench):
 def test_08_a_raster_whose_points_stand_for_areas_lies_half_a_cell_off_its_tie_point(bench):
     area = bench.tif("area.tif", RAMP, unit="K")
     point = bench.tif("point.tif", RAMP, unit="K")
-    import rasterio
-
     with rasterio.open(point, "r+") as file:
         file.update_tags(AREA_OR_POINT="Point")
     one, two = bench.layer("temperature", area), bench.layer("temperature", point)

@@ -77,7 +77,7 @@ def test_28_minus_9999_beside_a_nan_tag_is_refused_with_the_line_to_write(bench)
     values = np.full((4, 6), 280.0, dtype=np.float32)
     values[0, 0], values[0, 1] = -9999, np.nan
     path = bench.tif("t.tif", values, unit="K", nodata=np.nan)
-    with pytest.raises(ValuesError, match="1 of 23 values.*-9999") as refused:
+    with pytest.raises(ValuesError, match=r"1 of 23 values.*-9999") as refused:
         bench.layer("temperature", path).values(WHOLE)
     assert "nodata = -9999" in refused.value.fix
     mended = bench.layer("temperature", path, nodata=-9999).values(WHOLE)

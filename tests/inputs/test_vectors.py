@@ -8,6 +8,7 @@ import math
 
 import geopandas as gpd
 import numpy as np
+import pandas as pd
 import pytest
 import shapely
 from rasterio.transform import from_origin
@@ -217,8 +218,6 @@ def test_regions_are_read_from_every_format_alike(bench, name):
 
 
 def test_a_parquet_file_without_geometry_is_refused(bench):
-    import pandas as pd
-
     pd.DataFrame({"id": ["a"]}).to_parquet(bench.path("r.parquet"))
     with pytest.raises(FileFormatError, match="GeoParquet"):
         bench.plan(regions={"path": str(bench.path("r.parquet")), "id": "id"})
