@@ -66,6 +66,7 @@ class Plan:
     water_method: str
     scheme: Scheme
     regions: Regions | None
+    notes: tuple[str, ...] = ()
 
     @property
     def n_regions(self) -> int:

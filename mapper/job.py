@@ -39,6 +39,7 @@ LAYER_NAMES = (
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
 RUNOFF_METHODS = ("turc-1954", "turc-pike")
+REGISTRATIONS = ("cell", "node")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
@@ -65,6 +66,7 @@ class LayerSpec:
     offset: float | None = None
     nodata: tuple[float, ...] = ()
     resampling: str = "auto"
+    registration: str | None = None
 
     @property
     def where(self) -> str:
@@ -303,6 +305,9 @@ class _Table:
         if not good or (count is not None and len(listed) != count):
             self.wrong(key, f"{count or 'some'} numbers", f"{key} = {example}")
             return None
+        if key != "nodata" and not all(math.isfinite(one) for one in listed):
+            self.wrong(key, "finite numbers", f"{key} = {example}")
+            return None
         return tuple(float(one) for one in listed)
 
     def finish(self) -> None:
@@ -380,6 +385,7 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         "sheet": table.optional_text("layer"),
         "crs": table.optional_text("crs"),
         "nodata": table.numbers("nodata", None, "-9999") or (),
+        "registration": _registration(table),
     }
     if lithology:
         legend = table.needed_text("legend", '"legend.csv"')
@@ -405,6 +411,13 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         offset=table.number("offset"),
         resampling=table.choice("resampling", RESAMPLING, default="auto"),
     )
+
+
+def _registration(table: _Table) -> str | None:
+    if "registration" not in table.values:
+        table.known.append("registration")
+        return None
+    return table.choice("registration", REGISTRATIONS, default="cell")
 
 
 def _law_spec(table: _Table) -> LawSpec:

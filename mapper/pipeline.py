@@ -460,6 +460,7 @@ class Inspection:
             + (f"; {'; '.join(one.changed)}" if one.changed else "")
             for rock, one in self.plan.scheme.by_rock.items()
         ]
+        lines += [f"note        {note}" for note in self.plan.notes]
         lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
         return lines
 

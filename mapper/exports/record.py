@@ -83,6 +83,7 @@ def describe_plan(plan: Plan) -> dict[str, Any]:
             "lithology": {"how": "polygons" if lithology.polygons else lithology.how},
             **{name: _describe_layer(layer) for name, layer in plan.layers.items()},
         },
+        "notes": list(plan.notes),
         "water_method": plan.water_method if "runoff" not in plan.layers else "runoff given",
         "laws": {rock: _describe_law(one) for rock, one in plan.scheme.by_rock.items()},
         "regions": None
