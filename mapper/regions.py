@@ -119,7 +119,7 @@ def _names(values: tuple[Any, ...], spec: RegionsSpec, where: str) -> tuple[str,
                 fix="an id for every region",
             )
         )
-    names = tuple(_name(one) for one in values)
+    names = tuple("" if is_missing(one) else _name(one) for one in values)
     twice = [name for name, count in Counter(names).items() if count > 1]
     if twice and not empty:
         problems.add(
@@ -143,7 +143,7 @@ def _names(values: tuple[Any, ...], spec: RegionsSpec, where: str) -> tuple[str,
 
 
 def _name(value: Any) -> str:
-    if isinstance(value, float | np.floating) and value == int(value):
+    if isinstance(value, float | np.floating) and float(value).is_integer():
         return str(int(value))
     return str(value)
 

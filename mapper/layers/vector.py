@@ -45,6 +45,13 @@ def read_vector(
             "the file holds no vectors", where=where, fix="a GeoPackage, GeoJSON, Shapefile ..."
         )
     try:
+        layers = [str(one) for one in pyogrio.list_layers(path)[:, 0]]
+        if layer is None and len(layers) > 1:
+            raise RegionError(
+                f"the file holds {len(layers)} layers: {', '.join(layers)}",
+                where=where,
+                fix=f'layer = "{layers[0]}"',
+            )
         frame = pyogrio.read_dataframe(path, layer=layer)
     except (DataSourceError, DataLayerError) as cause:
         raise FileFormatError(
@@ -58,6 +65,8 @@ def read_vector(
             where=where,
             fix=f'"{near[0]}"' if near else "a file with attributes",
         )
+    if "geometry" not in frame.columns:
+        raise RegionError("the file holds a table without shapes", where=where, fix="polygons")
     found = crs or (frame.crs.to_wkt() if frame.crs is not None else None)
     if found is None:
         raise GridError(
