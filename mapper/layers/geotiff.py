@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import threading
+import warnings
 from functools import lru_cache
 from typing import Any
 
@@ -12,13 +13,13 @@ import rioxarray
 import xarray as xr
 from numpy.typing import NDArray
 from rasterio.enums import ColorInterp, MaskFlags
-from rasterio.errors import RasterioError, RasterioIOError
+from rasterio.errors import NotGeoreferencedWarning, RasterioError, RasterioIOError
 
 from mapper.errors import FileFormatError, GridError
 from mapper.grid import parse_crs
 from mapper.job import LayerSpec
 from mapper.layers.axis import around_the_earth
-from mapper.layers.source import Source, north_up_axes, take
+from mapper.layers.source import Source, north_up_axes, stamp, take
 
 MOST_CELLS = 2**40
 _local = threading.local()
@@ -33,8 +34,10 @@ def open_geotiff(spec: LayerSpec) -> Source:
     rotated georeferencing.
     """
     try:
-        with rasterio.open(spec.path, driver="GTiff") as dataset:
-            return _describe(dataset, spec)
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore", NotGeoreferencedWarning)  # refused below, in words
+            with rasterio.open(spec.path, driver="GTiff") as dataset:
+                return _describe(dataset, spec)
     except RasterioIOError as cause:
         raise FileFormatError(
             f"the file cannot be opened as GeoTIFF: {cause}", where=spec.where, fix="copy it again"
@@ -151,7 +154,7 @@ def _nodata(dataset: Any, band: int, spec: LayerSpec) -> tuple[tuple[float, ...]
 
 
 @lru_cache(maxsize=32)
-def _opened(path: str) -> xr.DataArray:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.DataArray:
     opened = rioxarray.open_rasterio(
         path, driver="GTiff", lock=False, masked=False, parse_coordinates=False, cache=False
     )
@@ -165,7 +168,7 @@ def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any],
     """Read raw values and the file's own mask for one window in file order."""
     band = int(source.variable or 1)
     try:
-        raw = take(_opened(source.path)[band - 1], rows, cols)
+        raw = take(_opened(source.path, stamp(source.path))[band - 1], rows, cols)
         if not source.has_mask:
             return raw, np.ones(raw.shape, dtype=np.bool_)
         return raw, take(_Mask(source.path, band), rows, cols) != 0
@@ -187,8 +190,9 @@ class _Mask:
 
     def __getitem__(self, window: tuple[slice, slice]) -> NDArray[np.uint8]:
         rows, cols = window
-        handles: dict[str, Any] = _local.__dict__.setdefault("handles", {})
-        if self.path not in handles:
-            handles[self.path] = rasterio.open(self.path, driver="GTiff")
+        handles: dict[tuple[str, tuple[int, int]], Any] = _local.__dict__.setdefault("handles", {})
+        key = (self.path, stamp(self.path))
+        if key not in handles:
+            handles[key] = rasterio.open(self.path, driver="GTiff")
         bounds = ((rows.start, rows.stop), (cols.start, cols.stop))
-        return np.asarray(handles[self.path].read_masks(self.band, window=bounds))
+        return np.asarray(handles[key].read_masks(self.band, window=bounds))
