@@ -61,6 +61,8 @@ class RegionCells:
     def split(self, cells: Ints) -> Pieces:
         """Split entries in ``cells`` among the regions of their cells."""
         held = self.single[cells]
+        if not self.cell.size:
+            return Pieces(np.arange(cells.size), held.astype(np.int64), np.ones(cells.size))
         whole = np.flatnonzero(held != MIXED)
         mixed = np.flatnonzero(held == MIXED)
         region = held[whole].astype(np.int64)

@@ -185,9 +185,12 @@ def plan_axis(
     A target cell's weights depend on that cell alone, never on the run it is asked for in.
     """
     centres, edges = _extended(axis)
-    low, high = float(target_edges[0]), float(target_edges[-1])
-    first = max(int(np.searchsorted(edges, low, side="right")) - 2, 0)
-    last = min(int(np.searchsorted(edges, high, side="left")) + 1, centres.size)
+    if method == "nearest":  # no more cells than are taken: each may cost a tile of the file
+        low, high, margin = float(target_centres[0]), float(target_centres[-1]), 0
+    else:
+        low, high, margin = float(target_edges[0]), float(target_edges[-1]), 1
+    first = max(int(np.searchsorted(edges, low, side="right")) - 1 - margin, 0)
+    last = min(int(np.searchsorted(edges, high, side="left")) + margin, centres.size)
     if last <= first:
         first, last = 0, 1
     centres, edges = centres[first:last], edges[first : last + 1]

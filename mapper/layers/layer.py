@@ -80,10 +80,12 @@ class Layer:
         raw, valid = self.source.read(rows, cols)
         values = self.decode(raw, valid)
         if self.how == "same":
+            inside, taken = same_cells(rows), same_cells(cols)
+            if values.shape == window.shape:
+                return np.where(valid, values, np.nan)
             whole = np.full(window.shape, np.nan)
-            inside = np.ix_(rows.nearest >= 0, cols.nearest >= 0)
-            index = np.ix_(rows.nearest[rows.nearest >= 0], cols.nearest[cols.nearest >= 0])
-            whole[inside] = np.where(valid[index], values[index], np.nan)
+            part = np.where(valid, values, np.nan)[inside[1], taken[1]]
+            whole[inside[0], taken[0]] = part
             return whole
         return resample(rows, cols, values, valid, _method(self.how))
 
@@ -114,6 +116,16 @@ class Layer:
         return sample_bilinear(plan, self.source, values, valid)
 
 
+def same_cells(plan: AxisPlan) -> tuple[slice, slice]:
+    """Where a run of the grid's own cells lies in the target and in what was read."""
+    inside = np.flatnonzero(plan.nearest >= 0)
+    if not inside.size:
+        return slice(0, 0), slice(0, 0)
+    first, last = int(inside[0]), int(inside[-1])
+    taken = slice(int(plan.nearest[first]), int(plan.nearest[last]) + 1)
+    return slice(first, last + 1), taken
+
+
 def _method(how: How) -> Method:
     return "nearest" if how in ("same", "points") else how  # type: ignore[return-value]
 
@@ -125,6 +137,8 @@ def _check_plausible(
     band: tuple[float, float],
     what: str,
 ) -> None:
+    if values.size and values.min() >= band[0] and values.max() <= band[1]:
+        return  # most often, and then nothing need be looked at cell by cell
     wrong = valid & ((values < band[0]) | (values > band[1]))
     count = int(wrong.sum())
     if not count:

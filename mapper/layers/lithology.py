@@ -13,7 +13,7 @@ from mapper.coverage import Polygons, cover_window
 from mapper.errors import LegendError
 from mapper.grid import Grid, Window
 from mapper.job import LayerSpec
-from mapper.layers.layer import How, axis_plans
+from mapper.layers.layer import How, axis_plans, same_cells
 from mapper.layers.resample import LEAST_SHARE, class_shares
 from mapper.layers.source import Source
 from mapper.layers.warp import plan_points
@@ -23,11 +23,11 @@ from mapper.rocks import ROCK_NAMES
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
-UNKNOWN = -1
+MOST_COUNTED_CODES = 2**16  # a wider span of codes is sorted instead of counted
 
 
 class RockCells(NamedTuple):
-    """Cells by rock: three arrays of one length, ordered by rock and then by cell.
+    """Cells and their rocks: three arrays of one length, ordered by cell and then by rock.
 
     ``cell`` counts along the rows of a window, ``rock`` is a position in `ROCK_NAMES`, ``share``
     the part of the cell [1]. The shares of a cell add up to the part that is mapped.
@@ -74,23 +74,24 @@ class Lithology:
         if self.source is None:  # pragma: no cover - one of the two is always there
             raise AssertionError
         cells, codes, shares = self._from_raster(self.source, window)
-        values, index = np.unique(codes, return_inverse=True)
-        return cells, index.astype(np.int64), shares, tuple(str(int(one)) for one in values)
+        values, index = _distinct(codes)
+        return cells, index, shares, tuple(str(int(one)) for one in values)
 
     def _from_raster(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
         if self.how == "points":
             return self._from_points(source, window)
-        rows, cols = axis_plans(source, self.grid, window, "mean")
+        same = self.how == "same"
+        rows, cols = axis_plans(source, self.grid, window, "nearest" if same else "mean")
         raw, valid = source.read(rows, cols)
-        if self.how != "same":
+        if not same:
             return class_shares(rows, cols, raw.astype(np.int64), valid)
-        inside = np.ix_(rows.nearest >= 0, cols.nearest >= 0)
-        index = np.ix_(rows.nearest[rows.nearest >= 0], cols.nearest[cols.nearest >= 0])
-        codes = np.zeros(window.shape, dtype=np.int64)
-        good = np.zeros(window.shape, dtype=np.bool_)
-        codes[inside], good[inside] = raw[index], valid[index]
-        cells = np.flatnonzero(good)
-        return cells, codes.ravel()[cells], np.ones(cells.size)
+        if raw.shape != window.shape:
+            at, taken = zip(same_cells(rows), same_cells(cols), strict=True)
+            whole, held = np.zeros(window.shape, raw.dtype), np.zeros(window.shape, np.bool_)
+            whole[at], held[at] = raw[taken], valid[taken]
+            raw, valid = whole, held
+        cells = np.flatnonzero(valid)
+        return cells, raw.ravel()[cells].astype(np.int64), np.ones(cells.size)
 
     def _from_points(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
         none = np.empty(0, dtype=np.int64)
@@ -124,6 +125,18 @@ class Lithology:
         ]
 
 
+def _distinct(codes: Ints) -> tuple[Ints, Ints]:
+    """The codes that occur, ascending, and the position of each entry's code among them."""
+    low = int(codes.min()) if codes.size else 0
+    span = (int(codes.max()) if codes.size else 0) - low + 1
+    if span > MOST_COUNTED_CODES:
+        values, index = np.unique(codes, return_inverse=True)
+        return values, index.astype(np.int64)
+    present = np.bincount(codes - low, minlength=span) > 0
+    position = np.cumsum(present) - 1
+    return np.flatnonzero(present) + low, position[codes - low]
+
+
 def unknown_codes(
     missing: list[str], spec: LayerSpec, legend: Legend, window: Window | None = None
 ) -> LegendError:
@@ -139,7 +152,7 @@ def unknown_codes(
 def _to_rocks(
     cells: Ints, codes: Ints, shares: Floats, mixtures: list[list[tuple[int, float]]]
 ) -> RockCells:
-    """Replace codes by rocks, add up a cell's shares of one rock, order by rock and cell."""
+    """Replace codes by rocks, add up a cell's shares of one rock, order by cell and rock."""
     parts: list[tuple[Ints, Ints, Floats]] = []
     simple = all(len(mixture) == 1 and mixture[0][1] == 1.0 for mixture in mixtures)
     if simple:
@@ -161,13 +174,12 @@ def _to_rocks(
 
 
 def _ordered(cell: Ints, rock: Ints, share: Floats) -> RockCells:
-    if (np.diff(cell) > 0).all():  # one rock a cell, in order: a stable sort by rock is enough
-        order = np.argsort(rock.astype(np.uint8), kind="stable")
-        return RockCells(cell[order], rock[order], share[order])
-    key = rock * (int(cell.max()) + 1) + cell
+    if (cell[1:] > cell[:-1]).all():  # one rock a cell, in order already
+        return RockCells(cell, rock, share)
+    key = cell * len(ROCK_NAMES) + rock
     order = np.argsort(key, kind="stable")
     key, cell, rock, share = key[order], cell[order], rock[order], share[order]
-    first = np.flatnonzero(np.concatenate([[True], np.diff(key) > 0]))
+    first = np.flatnonzero(np.concatenate([[True], key[1:] > key[:-1]]))
     summed = np.add.reduceat(share, first)
     keep = summed > LEAST_SHARE
     return RockCells(cell[first][keep], rock[first][keep], summed[keep])
