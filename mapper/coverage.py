@@ -21,6 +21,10 @@ the window that asks for it."""
 ROUNDING = 1e-9
 """Shares within this of 0 or 1 are taken as 0 or 1: coordinates are good to 1e-12 of the grid."""
 
+OVERLAP_TOLERANCE = 1e-6
+"""Part of a cell by which polygons may overlap or gape at a shared border and still be taken to
+meet: coordinates written with seven digits leave such slivers."""
+
 NONE = -1
 MIXED = -2
 

@@ -11,7 +11,7 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
-from mapper.coverage import MIXED, NONE, Polygons, cover_window, polygons_on
+from mapper.coverage import MIXED, NONE, OVERLAP_TOLERANCE, Polygons, cover_window, polygons_on
 from mapper.errors import Problems, RegionError
 from mapper.grid import Grid, Window, same_crs
 from mapper.job import RegionsSpec
@@ -19,11 +19,6 @@ from mapper.layers.vector import read_vector, reproject, valid_shapes
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
-
-OVERLAP_TOLERANCE = 1e-6
-"""Part of a cell by which regions may overlap or gape at a shared border and still be taken to
-meet: coordinates written with seven digits leave such slivers."""
-
 
 @dataclass(frozen=True, eq=False)
 class Regions:

@@ -4,13 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.coverage import Polygons, cover_window
-from mapper.errors import LegendError
+from mapper.coverage import OVERLAP_TOLERANCE, Polygons, cover_window
+from mapper.errors import LegendError, ValuesError
 from mapper.grid import Grid, Window
 from mapper.job import LayerSpec
 from mapper.layers.layer import How, axis_plans, same_cells
@@ -70,12 +70,45 @@ class Lithology:
         """Cells, position of the code in the names, share; and the names."""
         if self.polygons is not None:
             cover = cover_window(self.polygons, self.grid, window)
-            return *cover.entries(), self.polygons.names
+            return *self._settled(*cover.entries(), window), self.polygons.names
         if self.source is None:  # pragma: no cover - one of the two is always there
             raise AssertionError
         cells, codes, shares = self._from_raster(self.source, window)
         values, index = _distinct(codes)
         return cells, index, shares, tuple(str(int(one)) for one in values)
+
+    def _settled(
+        self, cells: Ints, codes: Ints, shares: Floats, window: Window
+    ) -> tuple[Ints, Ints, Floats]:
+        """Shares that add up to 1 where polygons meet but for slivers; refuses real overlap."""
+        covered = np.bincount(cells, weights=shares, minlength=window.n_cells)
+        if covered.max() > 1.0 + OVERLAP_TOLERANCE:
+            at = int(np.argmax(covered))
+            row, col = divmod(at, window.n_cols)
+            x = float(self.grid.x_centres(window.col + col, window.col + col + 1)[0])
+            y = float(self.grid.y_centres(window.row + row, window.row + row + 1)[0])
+            raise ValuesError(
+                f"rock polygons overlap: they cover {covered[at]:.3f} of the cell at "
+                f"x {x:g}, y {y:g}",
+                where=self.spec.where,
+                fix="polygons that do not overlap; the ground would count twice",
+            )
+        whole = np.abs(covered - 1.0) <= OVERLAP_TOLERANCE
+        return cells, codes, shares / np.where(whole, covered, 1.0)[cells]
+
+    def _whole_codes(self, raw: NDArray[Any], valid: NDArray[np.bool_]) -> Ints:
+        """Codes as whole numbers; what is not valid becomes 0."""
+        if raw.dtype.kind == "f":
+            raw = np.where(valid, raw, 0)
+            odd = raw != np.rint(raw)
+            if odd.any():
+                raise ValuesError(
+                    f"{int(odd.sum())} of {raw.size} codes are not whole numbers, for example "
+                    f"{raw[odd][0]:g}",
+                    where=self.spec.where,
+                    fix="a raster of rock codes, not resampled but by nearest or mode",
+                )
+        return raw.astype(np.int64)
 
     def _from_raster(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
         if self.how == "points":
@@ -84,14 +117,15 @@ class Lithology:
         rows, cols = axis_plans(source, self.grid, window, "nearest" if same else "mean")
         raw, valid = source.read(rows, cols)
         if not same:
-            return class_shares(rows, cols, raw.astype(np.int64), valid)
+            return class_shares(rows, cols, self._whole_codes(raw, valid), valid)
         if raw.shape != window.shape:
             at, taken = zip(same_cells(rows), same_cells(cols), strict=True)
             whole, held = np.zeros(window.shape, raw.dtype), np.zeros(window.shape, np.bool_)
             whole[at], held[at] = raw[taken], valid[taken]
             raw, valid = whole, held
         cells = np.flatnonzero(valid)
-        return cells, raw.ravel()[cells].astype(np.int64), np.ones(cells.size)
+        codes = self._whole_codes(raw.ravel()[cells], np.ones(cells.size, dtype=np.bool_))
+        return cells, codes, np.ones(cells.size)
 
     def _from_points(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
         none = np.empty(0, dtype=np.int64)
@@ -103,7 +137,7 @@ class Lithology:
         good = (plan.row >= 0) & valid[row, col]
         at_row, at_col = np.nonzero(good)
         cells = at_row // self.points * window.n_cols + at_col // self.points
-        codes = raw[row, col][good].astype(np.int64)
+        codes = self._whole_codes(raw[row, col][good], np.ones(at_row.size, dtype=np.bool_))
         pairs = np.stack([codes, cells], axis=1)
         unique, count = np.unique(pairs, axis=0, return_counts=True)
         return unique[:, 1], unique[:, 0], count / self.points**2
@@ -175,6 +209,9 @@ def _to_rocks(
 
 def _ordered(cell: Ints, rock: Ints, share: Floats) -> RockCells:
     if (cell[1:] > cell[:-1]).all():  # one rock a cell, in order already
+        keep = share > LEAST_SHARE
+        if not keep.all():
+            cell, rock, share = cell[keep], rock[keep], share[keep]
         return RockCells(cell, rock, share)
     key = cell * len(ROCK_NAMES) + rock
     order = np.argsort(key, kind="stable")
