@@ -345,9 +345,12 @@ def _grid_spec(table: _Table) -> GridSpec:
     crs = table.optional_text("crs")
     resolution = table.numbers("resolution", None, "0.1")
     bounds = table.numbers("bounds", 4, "[left, bottom, right, top]")
-    if resolution is not None and (len(resolution) > 2 or min(resolution) <= 0):
+    if resolution is not None and not _is_resolution(resolution):
         table.wrong("resolution", "one or two positive numbers", "resolution = 0.1")
         resolution = None
+    if bounds is not None and not all(math.isfinite(one) for one in bounds):
+        table.wrong("bounds", "four finite numbers", "bounds = [-10, 40, 5, 50]")
+        bounds = None
     if bounds is not None and not (bounds[0] < bounds[2] and bounds[1] < bounds[3]):
         table.wrong("bounds", "left < right and bottom < top", "bounds = [-10, 40, 5, 50]")
         bounds = None
@@ -357,6 +360,11 @@ def _grid_spec(table: _Table) -> GridSpec:
         resolution=None if resolution is None else (resolution[0], resolution[-1]),
         bounds=None if bounds is None else (bounds[0], bounds[1], bounds[2], bounds[3]),
     )
+
+
+def _is_resolution(numbers: tuple[float, ...]) -> bool:
+    good = all(math.isfinite(one) and one > 0 for one in numbers)
+    return good and len(numbers) in (1, 2)
 
 
 def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:

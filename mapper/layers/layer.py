@@ -226,13 +226,18 @@ def place(source: Source, grid: Grid, *, where: str) -> Source:
     x, y = _rim(grid, window)
     source_x, source_y = transformer(grid.crs, source.crs).transform(x, y)
     good = np.isfinite(source_x) & np.isfinite(source_y)
-    if not good.any():
+    if not good.any() or _apart(source, source_x[good], source_y[good]):
         raise _misses(source, grid, where)
-    if parse_crs(source.crs).is_geographic:
-        source = replace(
-            source, x=nearest_turn(source.x, source_x[good].min(), source_x[good].max())
-        )
     return source
+
+
+def _apart(source: Source, x: Floats, y: Floats) -> bool:
+    """Whether points of the grid, in the source's CRS, lie all on one side of the source."""
+    if y.max() <= -source.y.edges[-1] or y.min() >= -source.y.edges[0]:
+        return True
+    if parse_crs(source.crs).is_geographic:
+        return False  # round the earth there are no sides
+    return bool(x.max() <= source.x.edges[0] or x.min() >= source.x.edges[-1])
 
 
 def _rim(grid: Grid, window: Window) -> tuple[Floats, Floats]:

@@ -23,13 +23,13 @@ from mapper.layers.axis import (
     inside_the_poles,
     one_turn,
 )
-from mapper.layers.source import UNTAGGED_FILLS, Source, take
+from mapper.layers.source import UNTAGGED_FILLS, Source, stamp, take
 
 _LON_LAT = "OGC:CRS84"
 
 
 @lru_cache(maxsize=32)
-def _opened(path: str) -> xr.Dataset:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.Dataset:
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
     return xr.open_dataset(
@@ -48,7 +48,7 @@ def open_netcdf(spec: LayerSpec) -> Source:
     FileFormatError, GridError, ValuesError.
     """
     try:
-        dataset = _opened(spec.path)
+        dataset = _opened(spec.path, stamp(spec.path))
     except (OSError, ValueError) as cause:
         raise FileFormatError(
             f"the file cannot be opened as NetCDF: {cause}", where=spec.where, fix="copy it again"
@@ -279,8 +279,9 @@ def _chunk(
 
 def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values for one window in file order; NetCDF has no separate mask."""
-    variable = _opened(source.path)[source.variable]
-    x_name, y_name = _dims(_opened(source.path), variable)
+    dataset = _opened(source.path, stamp(source.path))
+    variable = dataset[source.variable]
+    x_name, y_name = _dims(dataset, variable)
     flat = variable.isel({dim: 0 for dim in variable.dims if dim not in (x_name, y_name)})
     try:
         raw = take(flat.transpose(y_name, x_name), rows, cols)
