@@ -67,6 +67,8 @@ class LayerSpec:
     nodata: tuple[float, ...] = ()
     resampling: str = "auto"
     registration: str | None = None
+    paths: tuple[str, ...] = ()
+    years: tuple[int, int] | None = None
 
     @property
     def where(self) -> str:
@@ -385,10 +387,11 @@ def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
 
 def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
     lithology = name == "lithology"
-    path = _absolute(table.needed_text("path", '"file.tif"'), folder, table)
+    paths = _paths(table, folder)
     common: dict[str, Any] = {
         "name": name,
-        "path": path,
+        "path": paths[0],
+        "paths": paths,
         "variable": table.optional_text("variable"),
         "sheet": table.optional_text("layer"),
         "crs": table.optional_text("crs"),
@@ -415,10 +418,40 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         **common,
         **vegetation,
         units=table.optional_text("units"),
+        years=_years(table),
         scale=table.number("scale"),
         offset=table.number("offset"),
         resampling=table.choice("resampling", RESAMPLING, default="auto"),
     )
+
+
+def _paths(table: _Table, folder: Path) -> tuple[str, ...]:
+    """One path, several in a list, or a pattern with ``*`` for files side by side."""
+    value = table.values.get("path")
+    if not isinstance(value, list):
+        text = table.needed_text("path", '"file.tif"')
+        path = _absolute(text, folder, table)
+        if "*" not in text:
+            return (path,)
+        found = sorted(str(one) for one in Path(path).parent.glob(Path(path).name))
+        if not found:
+            table.wrong("path", "a pattern that some file matches", 'path = "tiles/*.tif"')
+        return tuple(found) or ("",)
+    table.known.append("path")
+    if not value or not all(isinstance(one, str) and one.strip() for one in value):
+        table.wrong("path", "a list of file names", 'path = ["west.tif", "east.tif"]')
+        return ("",)
+    return tuple(_absolute(one, folder, table) for one in value)
+
+
+def _years(table: _Table) -> tuple[int, int] | None:
+    pair = table.numbers("years", 2, "[1991, 2020]")
+    if pair is None:
+        return None
+    if any(one != int(one) for one in pair) or pair[0] > pair[1]:
+        table.wrong("years", "a first and a last year", "years = [1991, 2020]")
+        return None
+    return int(pair[0]), int(pair[1])
 
 
 def _registration(table: _Table) -> str | None:

@@ -13,6 +13,7 @@ from pathlib import Path
 from typing import Any
 
 import dask
+import geopandas as gpd
 import numpy as np
 from dask.callbacks import Callback
 from numpy.typing import NDArray
@@ -149,7 +150,7 @@ def run(
         _write_tables(found, spread, ranking, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
-        contents = Contents(folder, plan, found, _record(job, plan, result))
+        contents = Contents(folder, plan, found, _record(job, plan, result), spots)
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
         _write_record(contents, result)

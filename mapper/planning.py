@@ -80,10 +80,13 @@ def make_plan(job: Job) -> Plan:
     notes: list[str] = []
     if lithology is not None:
         notes += _check_codes(lithology, problems)
+        if lithology.source is not None:
+            notes += [f"lithology: {note}" for note in lithology.source.notes]
     for layer in layers.values():
         with problems.gather():
             sample_layer(layer)
-            notes += [f"{layer.name}: {note}" for note in odd_values(layer)]
+            found = (*layer.source.notes, *odd_values(layer))
+            notes += [f"{layer.name}: {note}" for note in found]
     problems.raise_if_any()
     if lithology is None or scheme is None:  # pragma: no cover - then a problem was raised
         raise AssertionError

@@ -10,6 +10,8 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any
 
+import geopandas as gpd
+
 from mapper.engine import Plan
 from mapper.exports.files import safe_cell
 from mapper.exports.tables import Totals
@@ -57,6 +59,7 @@ class Contents:
     plan: Plan
     found: Totals
     record: Mapping[str, Any]
+    hotspots: gpd.GeoDataFrame | None = None
 
     @property
     def title(self) -> str:

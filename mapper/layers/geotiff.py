@@ -208,8 +208,13 @@ def _opened(path: str, _stamp: tuple[int, int]) -> xr.DataArray:
     return opened
 
 
-def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+def read_window(
+    source: Source,
+    window: tuple[slice, slice],
+    at: slice | None,  # noqa: ARG001 - a GeoTIFF has no time axis
+) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values and the file's own mask for one window in file order."""
+    rows, cols = window
     band = int(source.variable or 1)
     try:
         raw = take(_opened(source.path, stamp(source.path))[band - 1], rows, cols)
@@ -253,11 +258,19 @@ class _Mask:
         self.path = path
         self.band = band
 
+<<<<<<< HEAD
     def __getitem__(self, window: tuple[slice, slice]) -> NDArray[np.uint8]:
         rows, cols = window
         handles: dict[tuple[str, tuple[int, int]], Any] = _local.__dict__.setdefault("handles", {})
         key = (self.path, stamp(self.path))
         if key not in handles:
             handles[key] = rasterio.open(self.path, driver="GTiff")
+=======
+    def __getitem__(self, window: tuple[Any, slice, slice]) -> NDArray[np.uint8]:
+        _, rows, cols = window
+        handles: dict[str, Any] = _local.__dict__.setdefault("handles", {})
+        if self.path not in handles:
+            handles[self.path] = rasterio.open(self.path, driver="GTiff")
+>>>>>>> readers
         bounds = ((rows.start, rows.stop), (cols.start, cols.stop))
         return np.asarray(handles[key].read_masks(self.band, window=bounds))

@@ -164,7 +164,7 @@ def test_several_bands_need_a_choice(tmp_path):
 def test_a_file_that_was_cut_short_is_refused(tmp_path):
     path = write_raster(tmp_path / "t.tif", np.random.default_rng(1).random((400, 400)))
     path.write_bytes(path.read_bytes()[:200_000])
-    with pytest.raises(FileFormatError, match="cannot be (read|opened)") as caught:
+    with pytest.raises(FileFormatError, match="is cut short") as caught:
         whole(opened(path))
     assert "copy" in caught.value.fix
 
