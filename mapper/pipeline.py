@@ -13,7 +13,6 @@ from pathlib import Path
 from typing import Any
 
 import dask
-import geopandas as gpd
 import numpy as np
 from dask.callbacks import Callback
 from numpy.typing import NDArray
@@ -145,12 +144,16 @@ def run(
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (engine.threads, progress))
-        spread = None if draws is None else _run_draws(draws, plan, journal, found, engine.threads)
+        spread = (
+            None
+            if draws is None
+            else _run_draws(draws, plan, (journal, len(windows)), found, engine.threads)
+        )
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
         _write_tables(found, spread, ranking, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
-        contents = Contents(folder, plan, found, _record(job, plan, result), spots)
+        contents = Contents(folder, plan, found, _record(job, plan, result))
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
         _write_record(contents, result)
@@ -220,7 +223,7 @@ def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
 
 
 def _run_draws(
-    draws: Draws, plan: Plan, journal: Journal, found: Totals, threads: int
+    draws: Draws, plan: Plan, blocks_of: tuple[Journal, int], found: Totals, threads: int
 ) -> SpreadFound:
     """Merge the states of the blocks and evaluate every draw on them."""
 
@@ -228,7 +231,7 @@ def _run_draws(
         tasks = [dask.delayed(one, pure=False)() for one in work]
         return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
 
-    counts = _merge_blocks(journal, len(blocks(plan.grid, block_shape(plan))))
+    counts = _merge_blocks(*blocks_of)
     return find_spread(draws, plan, counts, found.consumption, apply)
 
 

@@ -258,19 +258,11 @@ class _Mask:
         self.path = path
         self.band = band
 
-<<<<<<< HEAD
-    def __getitem__(self, window: tuple[slice, slice]) -> NDArray[np.uint8]:
-        rows, cols = window
+    def __getitem__(self, window: tuple[Any, slice, slice]) -> NDArray[np.uint8]:
+        _, rows, cols = window
         handles: dict[tuple[str, tuple[int, int]], Any] = _local.__dict__.setdefault("handles", {})
         key = (self.path, stamp(self.path))
         if key not in handles:
             handles[key] = rasterio.open(self.path, driver="GTiff")
-=======
-    def __getitem__(self, window: tuple[Any, slice, slice]) -> NDArray[np.uint8]:
-        _, rows, cols = window
-        handles: dict[str, Any] = _local.__dict__.setdefault("handles", {})
-        if self.path not in handles:
-            handles[self.path] = rasterio.open(self.path, driver="GTiff")
->>>>>>> readers
         bounds = ((rows.start, rows.stop), (cols.start, cols.stop))
         return np.asarray(handles[key].read_masks(self.band, window=bounds))

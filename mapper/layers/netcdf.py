@@ -23,25 +23,17 @@ from mapper.layers.axis import (
     inside_the_poles,
     one_turn,
 )
-<<<<<<< HEAD
 from mapper.layers.source import UNTAGGED_FILLS, Source, stamp, take
-=======
-from mapper.layers.source import UNTAGGED_FILLS, Source, take
 from mapper.layers.timeline import RawTime, Timeline, read_timeline
->>>>>>> readers
 
 _LON_LAT = "OGC:CRS84"
 
 
 @lru_cache(maxsize=32)
-<<<<<<< HEAD
 def _opened(path: str, _stamp: tuple[int, int]) -> xr.Dataset:
-=======
-def _opened(path: str) -> xr.Dataset:
     if Path(path).is_dir():
         store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None)
         return store
->>>>>>> readers
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
     return xr.open_dataset(
@@ -60,13 +52,8 @@ def open_netcdf(spec: LayerSpec) -> Source:
     FileFormatError, GridError, ValuesError.
     """
     try:
-<<<<<<< HEAD
         dataset = _opened(spec.path, stamp(spec.path))
-    except (OSError, ValueError) as cause:
-=======
-        dataset = _opened(spec.path)
     except ImportError as cause:
->>>>>>> readers
         raise FileFormatError(
             "Zarr needs the library zarr, which is not installed",
             where=spec.where,
@@ -346,20 +333,12 @@ def _chunk(
     return int(sizes[dims[0]]), int(sizes[dims[1]])
 
 
-<<<<<<< HEAD
-def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
-    """Read raw values for one window in file order; NetCDF has no separate mask."""
-    dataset = _opened(source.path, stamp(source.path))
-    variable = dataset[source.variable]
-    x_name, y_name = _dims(dataset, variable)
-    flat = variable.isel({dim: 0 for dim in variable.dims if dim not in (x_name, y_name)})
-=======
 def read_window(
     source: Source, window: tuple[slice, slice], at: slice | None
 ) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values for one window in file order, steps in front; there is no separate mask."""
     rows, cols = window
-    dataset = _opened(source.path)
+    dataset = _opened(source.path, stamp(source.path))
     variable = dataset[source.variable]
     x_name, y_name = _dims(dataset, variable)
     others = [str(dim) for dim in variable.dims if dim not in (x_name, y_name)]
@@ -369,7 +348,6 @@ def read_window(
         flat = flat.isel({time_name: at}).transpose(time_name, y_name, x_name)
     else:
         flat = flat.transpose(y_name, x_name)
->>>>>>> readers
     try:
         raw = take(flat, rows, cols)
     except (OSError, RuntimeError) as cause:

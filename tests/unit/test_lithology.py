@@ -112,7 +112,9 @@ def test_polygons_give_exact_shares(tmp_path):
 
 def test_polygons_that_overlap_are_refused(tmp_path):
     shapes = {1: shapely.box(0, 0, 4000, 4000), 2: shapely.box(0, 0, 1500, 1500)}
-    with pytest.raises(RegionError, match=r"geology polygons overlap: they cover 2\.000 of the cell"):
+    with pytest.raises(
+        RegionError, match=r"geology polygons overlap: they cover 2\.000 of the cell"
+    ):
         shares(polygon_job(tmp_path, shapes))
 
 
