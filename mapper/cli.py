@@ -67,11 +67,11 @@ def _positive(text: str) -> int:
 
 
 def _run(chosen: argparse.Namespace) -> int:
-    from mapper.job import load_job  # noqa: PLC0415
     from mapper.pipeline import run  # noqa: PLC0415
+    from mapper.planning import open_job  # noqa: PLC0415
 
     bar = ProgressBar(sys.stderr)
-    job = load_job(chosen.job)
+    job = open_job(chosen.job)
     result = run(
         job, out=chosen.out, fresh=chosen.fresh, threads=chosen.threads, progress=bar.update
     )
@@ -114,10 +114,10 @@ def _top_regions(result: RunResult) -> list[str]:
 
 
 def _inspect(chosen: argparse.Namespace) -> int:
-    from mapper.job import load_job  # noqa: PLC0415
     from mapper.pipeline import inspect  # noqa: PLC0415
+    from mapper.planning import open_job  # noqa: PLC0415
 
-    report = inspect(load_job(chosen.job))
+    report = inspect(open_job(chosen.job))
     print("\n".join(report.lines()))  # noqa: T201
     return DONE
 
