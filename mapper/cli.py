@@ -87,13 +87,13 @@ def _size(text: str) -> float:
 
 
 def _run(chosen: argparse.Namespace) -> int:
-    from mapper.job import load_job  # noqa: PLC0415
     from mapper.pipeline import Engine, run  # noqa: PLC0415
+    from mapper.planning import open_job  # noqa: PLC0415
 
     asked = {name: getattr(chosen, name) for name in ("threads", "scheduler", "memory")}
     given = {name: value for name, value in asked.items() if value is not None}
     bar = ProgressBar(sys.stderr)
-    job = load_job(chosen.job)
+    job = open_job(chosen.job)
     result = run(
         job,
         out=chosen.out,
@@ -183,10 +183,10 @@ def _top_regions(result: RunResult) -> list[str]:
 
 
 def _inspect(chosen: argparse.Namespace) -> int:
-    from mapper.job import load_job  # noqa: PLC0415
     from mapper.pipeline import inspect  # noqa: PLC0415
+    from mapper.planning import open_job  # noqa: PLC0415
 
-    report = inspect(load_job(chosen.job))
+    report = inspect(open_job(chosen.job))
     print("\n".join(report.lines()))  # noqa: T201
     return DONE
 

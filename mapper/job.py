@@ -149,6 +149,25 @@ def load_job(path: str | Path) -> Job:
     ------
     MissingFileError, JobError, or ManyProblemsError with every problem that the file itself has.
     """
+    job, problems = read_job(path)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
+
+
+def read_job(path: str | Path) -> tuple[Job | None, Problems]:
+    """Read a job file with its problems, so that more can be gathered before they are raised.
+
+    Returns
+    -------
+    The job, wrong values replaced by defaults, or None where so much is missing that nothing
+    more can be looked at; and the problems.
+
+    Raises
+    ------
+    MissingFileError, JobError where the file cannot be read at all.
+    """
     path = Path(path).absolute()
     table = _read_toml(path)
     problems = Problems()
@@ -168,8 +187,11 @@ def load_job(path: str | Path) -> Job:
     )
     root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
-    problems.raise_if_any()
-    return job
+    paths = [one.path for one in job.layers.values()]
+    paths += [job.regions.path, job.regions.id] if job.regions is not None else []
+    lithology = job.layers.get("lithology")
+    enough = all(paths) and lithology is not None and bool(lithology.legend)
+    return (job if enough else None), problems
 
 
 def _read_toml(path: Path) -> dict[str, Any]:

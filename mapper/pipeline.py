@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 import json
 import os
 import resource
@@ -208,18 +207,36 @@ def _lives(process: int) -> bool:
 
 
 def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
-    """What must be the same for finished blocks to be used again."""
-    described = json.dumps(describe_job(job), sort_keys=True, default=str)
+    """What must be the same for finished blocks to be used again, key by key of the job."""
+    described = {key: one for key, one in describe_job(job).items() if key not in _NO_NUMBERS}
     files = {
-        f"input {Path(path).name}": [Path(path).stat().st_size, Path(path).stat().st_mtime_ns]
-        for path in input_files(job)
-    }
+        f"the file {Path(path).name} ({at})": [
+            Path(path).stat().st_size, Path(path).stat().st_mtime_ns
+        ]
+        for at, path in enumerate(input_files(job), start=1)
+    }  # fmt: skip
     return {
-        "job": hashlib.sha256(described.encode()).hexdigest(),
-        "versions": versions(),
+        **_flat(described),
+        **{f"version of {name}": one for name, one in versions().items()},
         "blocks": [len(windows), *windows[0].shape],
         **files,
     }
+
+
+_NO_NUMBERS = ("title", "path", "folder")
+"""Keys of a job that change no number."""
+
+
+def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
+    """Nested keys as one dotted key each."""
+    found: dict[str, str] = {}
+    for key, value in described.items():
+        name = f"{before}{key}"
+        if isinstance(value, Mapping) and value:
+            found |= _flat(value, f"{name}.")
+        else:
+            found[name] = json.dumps(value, default=str)
+    return found
 
 
 def _run_draws(

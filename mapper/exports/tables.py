@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.accounting import SQUARE_METRES_PER_KM2, tonnes_per_mole
+from mapper.accounting import SQUARE_METRES_PER_KM2, to_rate, tonnes_per_mole
 from mapper.engine import KEPT, OUTSIDE_RANGE, BlockSums, Flag
 from mapper.rocks import ROCK_NAMES
 from mapper.sums import totals
@@ -152,16 +152,24 @@ def _rocks_of(
     return rows
 
 
+LEAST_RATE = 1e-4
+"""Rate [mol m-2 yr-1] below which sums are compared with it instead of with themselves: they are
+counted in whole units of 2^-56 mol m-2 yr-1 a cell, which is not 1e-12 of a smaller rate."""
+
+
 def closure(found: Totals) -> dict[str, float]:
     """How far the split sums lie from the cells' own, relative; the run refuses above 1e-12."""
     area, consumption, drawdown = found.cells
+    least = area * to_rate(LEAST_RATE)
     return {
         "regions_and_outside_to_all_cells_area": _apart(found.area.sum(), area),
-        "regions_and_rocks_to_all_cells_consumption": _apart(found.consumption.sum(), consumption),
-        "regions_and_rocks_to_all_cells_drawdown": _apart(found.drawdown.sum(), drawdown),
+        "regions_and_rocks_to_all_cells_consumption": _apart(
+            found.consumption.sum(), consumption, least
+        ),
+        "regions_and_rocks_to_all_cells_drawdown": _apart(found.drawdown.sum(), drawdown, least),
     }
 
 
-def _apart(one: float, other: float) -> float:
-    largest = max(abs(one), abs(other))
+def _apart(one: float, other: float, least: float = 0.0) -> float:
+    largest = max(abs(one), abs(other), least)
     return float(abs(one - other) / largest) if largest else 0.0

@@ -111,9 +111,13 @@ def sample_bilinear(
 
 
 def _cell_means(values: Floats, good: NDArray[np.bool_], points: int) -> Floats:
-    shape = (values.shape[0] // points, points, values.shape[1] // points, points)
-    count = good.reshape(shape).sum(axis=(1, 3))
-    total = np.where(good, values, 0.0).reshape(shape).sum(axis=(1, 3))
+    filled = np.where(good, values, 0.0)
+    shape = (values.shape[0] // points, values.shape[1] // points)
+    count, total = np.zeros(shape, dtype=np.int64), np.zeros(shape)
+    for row in range(points):  # point by point: a sum over two axes adds in an order that
+        for col in range(points):  # depends on the window's shape
+            count += good[row::points, col::points]
+            total += filled[row::points, col::points]
     out = np.full(count.shape, np.nan)
     np.divide(total, count, out=out, where=count >= LEAST_COVER * points**2)
     return out
