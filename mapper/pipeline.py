@@ -20,6 +20,15 @@ from mapper.accounting import to_rate
 from mapper.cluster import connected, finished
 from mapper.engine import BlockSums, Plan, evaluate_block_states
 from mapper.errors import RunFolderError
+from mapper.exports.alternatives import (
+    LAW_COLUMNS,
+    SPREAD_COLUMNS,
+    LawTotals,
+    describe_alternatives,
+    law_rows,
+    spread_rows,
+    to_law_totals,
+)
 from mapper.exports.contents import Contents
 from mapper.exports.doubts import (
     describe_spread,
@@ -40,10 +49,12 @@ from mapper.exports.record import (
     versions,
 )
 from mapper.exports.tables import (
+    FLAG_COLUMNS,
     REGION_COLUMNS,
     ROCK_COLUMNS,
     Totals,
     closure,
+    flag_rows,
     region_rows,
     rock_rows,
     to_totals,
@@ -100,6 +111,7 @@ class RunResult:
     resumed_blocks: int
     spread: SpreadFound | None = None
     ranking: Ranking | None = None
+    laws: tuple[LawTotals, ...] = ()
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -149,9 +161,11 @@ def run(
             else _run_draws(draws, plan, (journal, len(windows)), found, engine.threads)
         )
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
+        laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, spread, ranking, folder)
+        _write_laws(laws, found.names, folder)
         seconds = time.monotonic() - began
-        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
+        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking, laws)
         contents = Contents(folder, plan, found, _record(job, plan, result))
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
@@ -383,6 +397,17 @@ def _write_one_map(
     return write_map(folder / "maps", kind, grid, pieces, threads=2)
 
 
+def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Path) -> None:
+    """Write the tables of a job with several laws; those of an earlier run are taken away."""
+    paths = [folder / "tables" / name for name in ("laws.csv", "law_spread.csv")]
+    if not laws:
+        for path in paths:
+            path.unlink(missing_ok=True)
+        return
+    write_csv(paths[0], LAW_COLUMNS, law_rows(laws, names))
+    write_csv(paths[1], SPREAD_COLUMNS, spread_rows(laws, names))
+
+
 def _write_tables(
     found: Totals, spread: SpreadFound | None, ranking: Ranking | None, folder: Path
 ) -> None:
@@ -391,6 +416,7 @@ def _write_tables(
     tables = folder / "tables"
     write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
     write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
+    write_csv(tables / "flags.csv", FLAG_COLUMNS, flag_rows(found))
     if spread is not None:
         write_sensitivity(tables / "sensitivity.csv", spread)
     if ranking is not None:
@@ -407,6 +433,7 @@ def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
             "drawdown_t_per_yr": float(found.drawdown.sum()),
             "valid_area_km2": float(found.valid_area.sum()),
             "area_under_flag_km2": found.flagged,
+            "between_laws": describe_alternatives(result.laws),
         },
         "checks": dict(result.checks),
         **_describe_doubts(job, result),
@@ -482,6 +509,12 @@ class Inspection:
             for rock, one in self.plan.scheme.by_rock.items()
         ]
         lines += [f"note        {note}" for note in self.plan.notes]
+        lines += [
+            f"alternative {one.name}, weight {one.weight:g}: in place of "
+            f"{self.plan.scheme.name} on {', '.join(one.replaced)}"
+            + (f"; not on {', '.join(one.kept)}" if one.kept else "")
+            for one in self.plan.scheme.alternatives
+        ]
         lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
         return lines
 
