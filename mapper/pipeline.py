@@ -48,6 +48,8 @@ from mapper.exports.tables import (
     with_intervals,
 )
 from mapper.grid import Window, blocks, parse_crs
+from mapper.hotspots import COLUMNS as HOTSPOT_COLUMNS
+from mapper.hotspots import find_hotspots, hotspot_rows
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
@@ -122,6 +124,7 @@ def run(
         spread = None if draws is None else _run_draws(draws, plan, journal, found, threads)
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
         _write_tables(found, spread, ranking, folder)
+        _write_hotspots(job, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
         _write_record(job, plan, result)
@@ -354,6 +357,14 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _write_hotspots(job: Job, folder: Path) -> None:
+    """Find the hot spots of the drawdown, where the job asks for them."""
+    if job.ranking is None or job.ranking.hotspots is None:
+        return
+    frame = find_hotspots(folder / "maps" / "drawdown.tif", job.ranking.hotspots)
+    write_csv(folder / "tables" / "hotspots.csv", HOTSPOT_COLUMNS, hotspot_rows(frame))
 
 
 def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:

@@ -1,3 +1,5 @@
+from itertools import pairwise
+
 import numpy as np
 import pytest
 
@@ -77,9 +79,7 @@ def test_states_of_parts_merge_to_the_same_bits_as_the_whole(cuts):
     ground, area, inputs = entries(20_000)
     whole = counted(ground, area, inputs)
     edges = [0, *cuts, 20_000]
-    parts = [
-        counted(ground, area, inputs, slice(a, b)) for a, b in zip(edges, edges[1:], strict=False)
-    ]
+    parts = [counted(ground, area, inputs, slice(a, b)) for a, b in pairwise(edges)]
     merged = merge_states(parts[::-1])
     for one, other in zip(whole, merged, strict=True):
         assert (one == other).all()
