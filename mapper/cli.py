@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import re
 import sys
 import time
 from collections.abc import Sequence
@@ -55,10 +56,17 @@ def _parser() -> argparse.ArgumentParser:
     run.add_argument("--out", metavar="DIR", help="folder to write; default: the job's own")
     run.add_argument("--fresh", action="store_true", help="start over where a run was cut short")
     run.add_argument("--threads", type=_positive, metavar="N", help="default: all processors")
+    run.add_argument(
+        "--scheduler", metavar="ADDRESS", help="a dask scheduler, or 'local' for processes here"
+    )
+    run.add_argument("--memory", type=_size, metavar="SIZE", help="such as 2GB; default 2GB")
     run.set_defaults(action=_run)
     inspect = commands.add_parser("inspect", help="look at a job before it runs, problems and all")
     inspect.add_argument("job", metavar="JOB", help="the job file (TOML)")
     inspect.set_defaults(action=_inspect)
+    verify = commands.add_parser("verify", help="check that a run folder is what it claims")
+    verify.add_argument("folder", metavar="RUN", help="the folder of a finished run")
+    verify.set_defaults(action=_verify)
     laws = commands.add_parser("laws", help="list the rate laws, or show one")
     laws.add_argument("name", nargs="?", metavar="NAME", help="a law to show in full")
     laws.set_defaults(action=_laws)
@@ -71,14 +79,27 @@ def _positive(text: str) -> int:
     return int(text)
 
 
+def _size(text: str) -> float:
+    match = re.fullmatch(r"([0-9.]+)\s*([kMGT]?)i?B?", text.strip())
+    if not match or float(match[1]) <= 0:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a size such as 500MB or 2GB")
+    return float(match[1]) * 1000.0 ** " kMGT".index(match[2] or " ")
+
+
 def _run(chosen: argparse.Namespace) -> int:
     from mapper.job import load_job  # noqa: PLC0415
-    from mapper.pipeline import run  # noqa: PLC0415
+    from mapper.pipeline import Engine, run  # noqa: PLC0415
 
+    asked = {name: getattr(chosen, name) for name in ("threads", "scheduler", "memory")}
+    given = {name: value for name, value in asked.items() if value is not None}
     bar = ProgressBar(sys.stderr)
     job = load_job(chosen.job)
     result = run(
-        job, out=chosen.out, fresh=chosen.fresh, threads=chosen.threads, progress=bar.update
+        job,
+        out=chosen.out,
+        fresh=chosen.fresh,
+        engine=Engine(**given),
+        progress=bar.update,
     )
     bar.close()
     print("\n".join(summary_lines(job.title, result)))  # noqa: T201
@@ -167,6 +188,16 @@ def _inspect(chosen: argparse.Namespace) -> int:
 
     report = inspect(load_job(chosen.job))
     print("\n".join(report.lines()))  # noqa: T201
+    return DONE
+
+
+def _verify(chosen: argparse.Namespace) -> int:
+    from mapper.exports.verify import verify  # noqa: PLC0415
+
+    found = verify(chosen.folder)
+    print("\n".join(f"checked  {line}" for line in found.checked))  # noqa: T201
+    found.raise_if_different()
+    print("The folder is what its record claims.")  # noqa: T201
     return DONE
 
 

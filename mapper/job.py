@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import json
 import math
 import os
 import re
@@ -38,8 +39,11 @@ LAYER_NAMES = (
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
 RUNOFF_METHODS = ("turc-1954", "turc-pike")
+REGISTRATIONS = ("cell", "node")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
+WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
+ALSO = ("netcdf", "geoparquet")
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -62,6 +66,7 @@ class LayerSpec:
     offset: float | None = None
     nodata: tuple[float, ...] = ()
     resampling: str = "auto"
+    registration: str | None = None
 
     @property
     def where(self) -> str:
@@ -127,6 +132,7 @@ class Job:
     folder: str
     uncertainty: UncertaintySpec | None = None
     ranking: RankingSpec | None = None
+    write: tuple[str, ...] = WRITTEN
 
 
 def load_job(path: str | Path) -> Job:
@@ -154,9 +160,9 @@ def load_job(path: str | Path) -> Job:
         water_method=root.table("water").choice("method", RUNOFF_METHODS, default="turc-1954"),
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
-        folder=_output_folder(root.table("output"), folder, path.stem),
         uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
         ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
+        **_output(root.table("output"), folder, path.stem),
     )
     root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
@@ -249,6 +255,19 @@ class _Table:
             return default
         return value
 
+    def choices(
+        self, key: str, among: tuple[str, ...], *, default: tuple[str, ...]
+    ) -> tuple[str, ...]:
+        value = self._take(key)
+        if value is None:
+            return default
+        listed = value if isinstance(value, list) else [value]
+        if any(one not in among for one in listed):
+            needed = "a list of " + ", ".join(among)
+            self.wrong(key, needed, f"{key} = {json.dumps(list(among))}")
+            return default
+        return tuple(listed)
+
     def number(self, key: str) -> float | None:
         value = self._take(key)
         if value is None:
@@ -285,6 +304,9 @@ class _Table:
         good = all(isinstance(one, int | float) and not isinstance(one, bool) for one in listed)
         if not good or (count is not None and len(listed) != count):
             self.wrong(key, f"{count or 'some'} numbers", f"{key} = {example}")
+            return None
+        if key != "nodata" and not all(math.isfinite(one) for one in listed):
+            self.wrong(key, "finite numbers", f"{key} = {example}")
             return None
         return tuple(float(one) for one in listed)
 
@@ -363,6 +385,7 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         "sheet": table.optional_text("layer"),
         "crs": table.optional_text("crs"),
         "nodata": table.numbers("nodata", None, "-9999") or (),
+        "registration": _registration(table),
     }
     if lithology:
         legend = table.needed_text("legend", '"legend.csv"')
@@ -388,6 +411,13 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         offset=table.number("offset"),
         resampling=table.choice("resampling", RESAMPLING, default="auto"),
     )
+
+
+def _registration(table: _Table) -> str | None:
+    if "registration" not in table.values:
+        table.known.append("registration")
+        return None
+    return table.choice("registration", REGISTRATIONS, default="cell")
 
 
 def _law_spec(table: _Table) -> LawSpec:
@@ -436,6 +466,8 @@ def _regions_spec(table: _Table, folder: Path) -> RegionsSpec:
     )
 
 
-def _output_folder(table: _Table, folder: Path, stem: str) -> str:
+def _output(table: _Table, folder: Path, stem: str) -> dict[str, Any]:
     text = table.text("folder", default=f"out/{stem}")
-    return _absolute(text, folder, table)
+    write = table.choices("write", WRITTEN, default=WRITTEN)
+    also = table.choices("also", ALSO, default=())
+    return {"folder": _absolute(text, folder, table), "write": (*write, *also)}
