@@ -61,6 +61,8 @@ from mapper.exports.tables import (
     with_intervals,
 )
 from mapper.grid import Grid, Window, blocks, parse_crs
+from mapper.hotspots import COLUMNS as HOTSPOT_COLUMNS
+from mapper.hotspots import find_hotspots, hotspot_rows
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
@@ -76,8 +78,8 @@ from mapper.planning import (
 from mapper.ranking import CLEARLY_AHEAD, Ranking
 from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
-from mapper.uncertainty.propagate import Work
-from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
+from mapper.uncertainty.propagate import Apply, Work
+from mapper.uncertainty.spread import SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
@@ -155,15 +157,17 @@ def run(
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (engine.threads, progress))
-        spread = (
-            None
-            if draws is None
-            else _run_draws(draws, plan, (journal, len(windows)), found, engine.threads)
-        )
+        spread = None
+        if draws is not None:
+            counts = _merge_blocks(journal, len(windows))
+            spread = find_spread(
+                draws, plan, counts, found.consumption, _in_threads(engine.threads)
+            )
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
         laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, spread, ranking, folder)
         _write_laws(laws, found.names, folder)
+        _write_hotspots(job, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking, laws)
         contents = Contents(folder, plan, found, _record(job, plan, result))
@@ -253,17 +257,14 @@ def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
     return found
 
 
-def _run_draws(
-    draws: Draws, plan: Plan, blocks_of: tuple[Journal, int], found: Totals, threads: int
-) -> SpreadFound:
-    """Merge the states of the blocks and evaluate every draw on them."""
+def _in_threads(threads: int) -> Apply:
+    """Does pieces of work in dask's threads."""
 
     def apply(work: list[Work]) -> list[NDArray[np.float64]]:
         tasks = [dask.delayed(one, pure=False)() for one in work]
         return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
 
-    counts = _merge_blocks(*blocks_of)
-    return find_spread(draws, plan, counts, found.consumption, apply)
+    return apply
 
 
 STATES_HELD = 2_000_000
@@ -453,6 +454,14 @@ def _write_record(contents: Contents, result: RunResult) -> None:
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _write_hotspots(job: Job, folder: Path) -> None:
+    """Find the hot spots of the drawdown, where the job asks for them."""
+    if job.ranking is None or job.ranking.hotspots is None:
+        return
+    frame = find_hotspots(folder / "maps" / "drawdown.tif", job.ranking.hotspots)
+    write_csv(folder / "tables" / "hotspots.csv", HOTSPOT_COLUMNS, hotspot_rows(frame))
 
 
 def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
