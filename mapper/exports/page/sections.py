@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from mapper.engine import FLAG_MEANING, Flag
-from mapper.exports.colours import ROCK_COLOUR, flag_key, hex_at, scale
+from mapper.exports.colours import ROCK_COLOUR, flag_key
 from mapper.exports.contents import OTHER_ROWS, Contents, Table
 from mapper.exports.page.markup import (
     Cell,
@@ -120,10 +120,8 @@ def _matrix(contents: Contents, rows: list[Row], whole: list[Row]) -> str:
 def _tinted(value: float, most: float) -> Cell:
     if not math.isfinite(value) or value <= 0:
         return Cell('<span class="none">·</span>', numeric=True)
-    share = math.sqrt(value / most)
-    colour = hex_at(scale("drawdown"), 0.9 * share)
-    ink = "#fff" if share > 0.62 else "inherit"
-    html = f'<b style="background:{colour};color:{ink}">{number(value, 3)}</b>'
+    strength = 6.0 + 46.0 * math.sqrt(value / most)  # percent; dark text stays readable on all
+    html = f'<b style="--tint:{strength:.0f}%">{number(value, 3)}</b>'
     return Cell(html, value, numeric=True)
 
 
