@@ -16,8 +16,6 @@ if TYPE_CHECKING:
     from mapper.laws import LAWS
     from mapper.pipeline import inspect, run
 
-__version__ = "0.1.0"
-
 __all__ = ["LAWS", "drawdown", "inspect", "load_job", "open_layers", "run"]
 
 # Drivers that read or write files other than the one named are never needed, and GDAL reads these

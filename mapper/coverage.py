@@ -21,6 +21,10 @@ the window that asks for it."""
 ROUNDING = 1e-9
 """Shares within this of 0 or 1 are taken as 0 or 1: coordinates are good to 1e-12 of the grid."""
 
+OVERLAP_TOLERANCE = 1e-6
+"""Part of a cell by which polygons may overlap or gape at a shared border and still be taken to
+meet: coordinates written with seven digits leave such slivers."""
+
 NONE = -1
 MIXED = -2
 
@@ -132,13 +136,19 @@ def _cover_tile(
                     cols.start - window.col : cols.stop - window.col]  # fmt: skip
     for position in _touching(polygons.bounds, tile):
         share = cover_tile(polygons.edges[position], tile)[part]
-        target[share == 1.0] = position
-        at_row, at_col = np.nonzero((share > 0.0) & (share < 1.0))
-        if at_row.size:
-            target[at_row, at_col] = MIXED
-            cell = (at_row + rows.start - window.row) * window.n_cols
-            cell += at_col + cols.start - window.col
-            pieces.append((cell, np.full(cell.size, position), share[at_row, at_col]))
+        taken = (share > 0.0) & (target != NONE)
+        divided = ((share > 0.0) & (share < 1.0)) | taken
+        target[(share == 1.0) & ~taken] = position
+        at_row, at_col = np.nonzero(divided)
+        if not at_row.size:
+            continue
+        cell = (at_row + rows.start - window.row) * window.n_cols
+        cell += at_col + cols.start - window.col
+        held = target[at_row, at_col]
+        whole = held >= 0  # another polygon fills the cell: a sliver, or an overlap
+        pieces.append((cell[whole], held[whole].astype(np.int64), np.ones(int(whole.sum()))))
+        pieces.append((cell, np.full(cell.size, position), share[at_row, at_col]))
+        target[at_row, at_col] = MIXED
 
 
 def _touching(bounds: Floats, tile: Window) -> Ints:

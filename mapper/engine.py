@@ -18,7 +18,9 @@ from mapper.layers.lithology import Lithology, RockCells
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import RockLaw, Scheme
-from mapper.sums import LIMBS, Counts, add_up, unit_exponent
+from mapper.states import AXES as STATE_AXES
+from mapper.states import StateCounts, StateLayout, count_states
+from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -64,6 +66,7 @@ class Plan:
     water_method: str
     scheme: Scheme
     regions: Regions | None
+    notes: tuple[str, ...] = ()
 
     @property
     def n_regions(self) -> int:
@@ -168,13 +171,70 @@ def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
 
 def evaluate_block(plan: Plan, window: Window) -> tuple[BlockMaps, BlockSums]:
     """Read, align and evaluate one block: its part of each map, and its sums."""
+    maps, sums, _ = evaluate_block_states(plan, window, None)
+    return maps, sums
+
+
+def evaluate_block_states(
+    plan: Plan, window: Window, layout: StateLayout | None
+) -> tuple[BlockMaps, BlockSums, StateCounts | None]:
+    """Evaluate one block, and count the area in each state where a layout is given."""
     rocks = plan.lithology.rock_cells(window)
     inputs = read_inputs(plan, window)
-    rate, flags = _evaluate_entries(plan.scheme, rocks, inputs)
-    maps = _to_cells(rocks, rate, flags, window)
+    result = RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))
+    maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
-    return maps, _sum_block(plan, rocks, RockResult(rate, flags), (regions, areas, maps))
+    ground = _split_ground(rocks, regions, areas)
+    sums = _sum_block(plan, result, ground, (regions, areas, maps))
+    if layout is None:
+        return maps, sums, None
+    return maps, sums, _count_block(plan, layout, result, ground, inputs)
+
+
+class _Ground(NamedTuple):
+    """Pieces of ground: position of the entry, cell, region * N_ROCKS + rock, and area [m2]."""
+
+    entry: Ints
+    cell: Ints
+    key: Ints
+    area: Floats
+
+
+def _split_ground(rocks: RockCells, regions: RegionCells, areas: Floats) -> _Ground:
+    pieces = regions.split(rocks.cell)
+    cell = rocks.cell[pieces.entry]
+    key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
+    return _Ground(pieces.entry, cell, key, areas[cell] * rocks.share[pieces.entry] * pieces.part)
+
+
+def _count_block(
+    plan: Plan,
+    layout: StateLayout,
+    result: RockResult,
+    ground: _Ground,
+    inputs: Mapping[str, Floats],
+) -> StateCounts:
+    """Count the states of the pieces that weather and have a result."""
+    laws = [plan.scheme.by_rock.get(name) for name in ROCK_NAMES]
+    weathers = np.array([one is not None for one in laws])
+    rock = (ground.key % N_ROCKS).astype(np.int8)
+    chosen = weathers[rock] & ~np.isnan(result.rate)[ground.entry]
+    cell, key, area = ground.cell, ground.key, ground.area
+    if not chosen.all():
+        cell, key, area, rock = cell[chosen], key[chosen], area[chosen], rock[chosen]
+    places: dict[str, NDArray[np.int32]] = {}
+    for name in layout.names:
+        reads = np.array([one is None or name in one.law.input_names for one in laws])
+        places[name] = STATE_AXES[name].place(inputs[name])[cell]
+        if not reads.all():
+            places[name] *= reads[rock]
+    return count_states(layout, key, area, places, unit_exponent(plan.grid))
+
+
+def state_layout(plan: Plan) -> StateLayout:
+    """Which layers the states of a plan are made of."""
+    return StateLayout(plan.scheme.input_names(), N_ROCKS)
 
 
 def _evaluate_entries(
@@ -182,7 +242,7 @@ def _evaluate_entries(
 ) -> tuple[Floats, Bits]:
     rate = np.empty(rocks.cell.size)
     flags = np.zeros(rocks.cell.size, dtype=np.uint8)
-    for rock, part in rock_slices(rocks):
+    for rock, part in rock_parts(rocks):
         cells = rocks.cell[part]
         law = scheme.by_rock.get(rock)
         names = law.law.input_names if law else ()
@@ -194,11 +254,13 @@ def _evaluate_entries(
     return rate, flags
 
 
-def rock_slices(rocks: RockCells) -> list[tuple[str, slice]]:
-    """The stretch of entries of each rock that occurs."""
-    edges = np.searchsorted(rocks.rock, np.arange(N_ROCKS + 1))
+def rock_parts(rocks: RockCells) -> list[tuple[str, Ints]]:
+    """The entries of each rock that occurs, in their own order."""
+    small = rocks.rock.astype(np.uint8)  # a stable sort of bytes takes one pass
+    order = np.argsort(small, kind="stable")
+    edges = np.concatenate([[0], np.cumsum(np.bincount(small, minlength=N_ROCKS))])
     return [
-        (ROCK_NAMES[at], slice(int(edges[at]), int(edges[at + 1])))
+        (ROCK_NAMES[at], order[edges[at] : edges[at + 1]])
         for at in range(N_ROCKS)
         if edges[at + 1] > edges[at]
     ]
@@ -210,17 +272,22 @@ KEPT = np.array([drawdown_share(ROCKS[name]) for name in ROCK_NAMES])
 
 def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> BlockMaps:
     """Weigh each cell's rocks by their shares; what has no result counts as no data."""
-    n = window.n_cells
-    consumption, drawdown, valid = np.zeros(n), np.zeros(n), np.zeros(n)
+    n, cell = window.n_cells, rocks.cell
+    good = ~np.isnan(rate)
+    share = np.where(good, rocks.share, 0.0)
+    taken = np.where(good, rate, 0.0) * share
     cell_flags = np.zeros(n, dtype=np.uint8)
-    for _, part in rock_slices(rocks):
-        cells, here = rocks.cell[part], rate[part]
-        good = ~np.isnan(here)
-        cells, share, taken = cells[good], rocks.share[part][good], here[good]
-        consumption[cells] += share * taken
-        drawdown[cells] += share * taken * KEPT[rocks.rock[part.start]]
-        valid[cells] += share
-        cell_flags[rocks.cell[part]] |= flags[part]
+    consumption: Floats = np.zeros(n)
+    drawdown: Floats = np.zeros(n)
+    valid: Floats = np.zeros(n)
+    if (cell[1:] > cell[:-1]).all():  # one rock a cell: nothing to add
+        consumption[cell], drawdown[cell], valid[cell] = taken, taken * KEPT[rocks.rock], share
+        cell_flags[cell] = flags
+    else:
+        consumption += np.bincount(cell, weights=taken, minlength=n)
+        drawdown += np.bincount(cell, weights=taken * KEPT[rocks.rock], minlength=n)
+        valid += np.bincount(cell, weights=share, minlength=n)
+        np.bitwise_or.at(cell_flags, cell, flags)
     empty = valid <= 0.0
     consumption[empty] = np.nan
     drawdown[empty] = np.nan
@@ -232,30 +299,33 @@ def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> Bl
 
 def _sum_block(
     plan: Plan,
-    rocks: RockCells,
     result: RockResult,
-    ground: tuple[RegionCells, Floats, BlockMaps],
+    ground: _Ground,
+    cells: tuple[RegionCells, Floats, BlockMaps],
 ) -> BlockSums:
-    regions, areas, maps = ground
+    regions, areas, maps = cells
     exponent = unit_exponent(plan.grid)
     n_regions = plan.n_regions
     every = regions.split(np.arange(areas.size))
     area = add_up(every.region, areas[every.entry] * every.part, n_regions, exponent)
-    pieces = regions.split(rocks.cell)
-    key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
-    held = areas[rocks.cell[pieces.entry]] * rocks.share[pieces.entry] * pieces.part
-    good = ~np.isnan(result.rate[pieces.entry])
-    taken = np.where(good, result.rate[pieces.entry], 0.0) * held
+    key, held = ground.key, ground.area
+    rate = result.rate[ground.entry]
+    good = ~np.isnan(rate)
     n_keys = n_regions * N_ROCKS
     shape = (n_regions, N_ROCKS, LIMBS)
-    flags = result.flags[pieces.entry]
+    flags = result.flags[ground.entry]
+    runs = runs_of(key)
+    rock_area = valid_area = add_up(runs, held, n_keys, exponent)
+    if not good.all():
+        valid_area = add_up(runs, np.where(good, held, 0.0), n_keys, exponent)
+        rate = np.where(good, rate, 0.0)
     flagged = [_flagged(key, held, flags, flag, n_keys, exponent) for flag in Flag]
     return BlockSums(
         area=area,
         total=_sum_cells(maps, areas, exponent),
-        rock_area=add_up(key, held, n_keys, exponent).reshape(shape),
-        valid_area=add_up(key[good], held[good], n_keys, exponent).reshape(shape),
-        consumption=add_up(key, taken, n_keys, exponent).reshape(shape),
+        rock_area=rock_area.reshape(shape),
+        valid_area=valid_area.reshape(shape),
+        consumption=add_up(runs, rate * held, n_keys, exponent).reshape(shape),
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
     )
 
@@ -271,7 +341,7 @@ def _flagged(
 
 def _sum_cells(maps: BlockMaps, areas: Floats, exponent: int) -> Counts:
     """Area, consumption and drawdown of all cells, without regions or rocks: the check sum."""
-    one_key = np.zeros(areas.size, dtype=np.int64)
+    one_key = Runs(np.zeros(1, dtype=np.int64), np.zeros(1, dtype=np.int64), areas.size)
     rows = [areas]
     for values in (maps.consumption, maps.drawdown):
         flat = values.ravel()

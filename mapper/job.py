@@ -13,6 +13,13 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from mapper.doubts import (
+    RankingSpec,
+    UncertaintySpec,
+    ranking_spec,
+    spread_of,
+    uncertainty_spec,
+)
 from mapper.errors import JobError, MissingFileError, Problems
 from mapper.laws import Spread
 from mapper.rocks import ROCK_NAMES
@@ -32,6 +39,7 @@ LAYER_NAMES = (
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
 RUNOFF_METHODS = ("turc-1954", "turc-pike")
+REGISTRATIONS = ("cell", "node")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
@@ -58,6 +66,7 @@ class LayerSpec:
     offset: float | None = None
     nodata: tuple[float, ...] = ()
     resampling: str = "auto"
+    registration: str | None = None
 
     @property
     def where(self) -> str:
@@ -77,11 +86,15 @@ class GridSpec:
 
 @dataclass(frozen=True, kw_only=True)
 class ParameterSpec:
-    """A parameter that the job sets: a value for all rocks, or one for each, and a spread."""
+    """A parameter that the job sets: a value for all rocks, or one for each, and a spread.
+
+    ``per_rock`` is None where the job does not say whether each rock is drawn for itself.
+    """
 
     value: float | None = None
     by_rock: Mapping[str, float] = field(default_factory=dict)
     spread: Spread | None = None
+    per_rock: bool | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -117,6 +130,8 @@ class Job:
     law: LawSpec
     regions: RegionsSpec | None
     folder: str
+    uncertainty: UncertaintySpec | None = None
+    ranking: RankingSpec | None = None
     write: tuple[str, ...] = WRITTEN
 
 
@@ -145,8 +160,11 @@ def load_job(path: str | Path) -> Job:
         water_method=root.table("water").choice("method", RUNOFF_METHODS, default="turc-1954"),
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
+        uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
+        ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
         **_output(root.table("output"), folder, path.stem),
     )
+    root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
     problems.raise_if_any()
     return job
@@ -262,6 +280,22 @@ class _Table:
             return None
         return float(value)
 
+    def flag(self, key: str) -> bool | None:
+        value = self._take(key)
+        if value is None or isinstance(value, bool):
+            return value
+        self.wrong(key, "true or false", f"{key} = true")
+        return None
+
+    def whole(self, key: str, *, default: int, least: int) -> int:
+        value = self._take(key)
+        if value is None:
+            return default
+        if isinstance(value, bool) or not isinstance(value, int) or value < least:
+            self.wrong(key, f"a whole number of {least} or more", f"{key} = {max(default, least)}")
+            return default
+        return value
+
     def numbers(self, key: str, count: int | None, example: str) -> tuple[float, ...] | None:
         value = self._take(key)
         if value is None:
@@ -270,6 +304,9 @@ class _Table:
         good = all(isinstance(one, int | float) and not isinstance(one, bool) for one in listed)
         if not good or (count is not None and len(listed) != count):
             self.wrong(key, f"{count or 'some'} numbers", f"{key} = {example}")
+            return None
+        if key != "nodata" and not all(math.isfinite(one) for one in listed):
+            self.wrong(key, "finite numbers", f"{key} = {example}")
             return None
         return tuple(float(one) for one in listed)
 
@@ -348,6 +385,7 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         "sheet": table.optional_text("layer"),
         "crs": table.optional_text("crs"),
         "nodata": table.numbers("nodata", None, "-9999") or (),
+        "registration": _registration(table),
     }
     if lithology:
         legend = table.needed_text("legend", '"legend.csv"')
@@ -375,6 +413,13 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
     )
 
 
+def _registration(table: _Table) -> str | None:
+    if "registration" not in table.values:
+        table.known.append("registration")
+        return None
+    return table.choice("registration", REGISTRATIONS, default="cell")
+
+
 def _law_spec(table: _Table) -> LawSpec:
     responses = table.table("responses")
     parameters = table.table("parameters")
@@ -395,10 +440,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
         return ParameterSpec(value=parent.number(name))
     table = parent.table(name)
     value = table.number("value")
-    sd = table.number("sd")
-    if sd is not None and sd < 0:
-        table.wrong("sd", "a spread of zero or more", "sd = 8.0")
-        sd = None
+    spread = spread_of(table, default="normal")
+    per_rock = table.flag("per_rock")
     rocks = table.table("by_rock")
     for rock in rocks.values:
         if rock not in ROCK_NAMES:
@@ -408,7 +451,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
     return ParameterSpec(
         value=value,
         by_rock={key: one for key, one in values.items() if one is not None},
-        spread=None if sd is None else Spread(kind="normal", sd=sd),
+        spread=spread,
+        per_rock=per_rock,
     )
 
 

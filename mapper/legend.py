@@ -98,6 +98,16 @@ def _entry(row: Mapping[str, str | None], where: str) -> tuple[str, float]:
     return rock, share
 
 
+def suggest_rock(text: str) -> str:
+    """The rock whose name stands in ``text`` or is most like it; nothing where none is near."""
+    plain = " ".join(text.lower().replace("_", " ").split())
+    for rock in ROCK_NAMES:
+        if rock in plain:
+            return rock
+    near = difflib.get_close_matches(plain, ROCK_NAMES, n=1, cutoff=0.6)
+    return near[0] if near else ""
+
+
 def find_rock(text: str, *, where: str) -> str:
     """The rock class that ``text`` names, directly or by its CGI Simple Lithology term.
 

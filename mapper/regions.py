@@ -11,7 +11,14 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
-from mapper.coverage import MIXED, NONE, Polygons, cover_window, polygons_on
+from mapper.coverage import (
+    MIXED,
+    NONE,
+    OVERLAP_TOLERANCE,
+    Polygons,
+    cover_window,
+    polygons_on,
+)
 from mapper.errors import Problems, RegionError
 from mapper.grid import Grid, Window, same_crs
 from mapper.job import RegionsSpec
@@ -19,10 +26,6 @@ from mapper.layers.vector import read_vector, reproject, valid_shapes
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
-
-OVERLAP_TOLERANCE = 1e-6
-"""Part of a cell by which regions may overlap or gape at a shared border and still be taken to
-meet: coordinates written with seven digits leave such slivers."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -61,6 +64,8 @@ class RegionCells:
     def split(self, cells: Ints) -> Pieces:
         """Split entries in ``cells`` among the regions of their cells."""
         held = self.single[cells]
+        if not self.cell.size:
+            return Pieces(np.arange(cells.size), held.astype(np.int64), np.ones(cells.size))
         whole = np.flatnonzero(held != MIXED)
         mixed = np.flatnonzero(held == MIXED)
         region = held[whole].astype(np.int64)
@@ -143,7 +148,7 @@ def _names(values: tuple[Any, ...], spec: RegionsSpec, where: str) -> tuple[str,
 
 
 def _name(value: Any) -> str:
-    if isinstance(value, float | np.floating) and value == int(value):
+    if isinstance(value, float | np.floating) and value.is_integer():
         return str(int(value))
     return str(value)
 

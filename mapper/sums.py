@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from typing import Any
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,13 +14,17 @@ from mapper.grid import Grid
 Floats = NDArray[np.float64]
 Counts = NDArray[np.int64]
 
-LIMB_BITS = 24
-LIMBS = 3
-UNIT_BITS = 58
-"""A value is counted in units of the cell's size times 2^-58: a rate of 0.01 mol m-2 yr-1 is
-then kept to 4e-16 of itself, and 8192 mol m-2 yr-1 is the most that fits."""
+LIMB_BITS = 32
+LIMBS = 2
+UNIT_BITS = 56
+"""A value is counted in units of the cell's size times 2^-56: a rate of 0.01 mol m-2 yr-1 is
+then kept to 2e-15 of itself, and 128 mol m-2 yr-1 is the most that fits."""
 
 LARGEST_RATE = 2.0 ** (LIMB_BITS * LIMBS - 1 - UNIT_BITS)
+
+MOST_AT_ONCE = 2**16
+"""Values added at one time: double precision adds 2^21 limbs exactly, and this many stay in the
+processor's cache."""
 
 
 def unit_exponent(grid: Grid) -> int:
@@ -35,13 +39,28 @@ def unit_exponent(grid: Grid) -> int:
     return math.frexp(nominal)[1] - UNIT_BITS
 
 
-def add_up(keys: NDArray[Any], values: Floats, n_keys: int, exponent: int) -> Counts:
+class Runs(NamedTuple):
+    """Stretches of equal keys: the first position and the key of each, and the length of all."""
+
+    start: NDArray[np.int64]
+    key: NDArray[np.int64]
+    size: int
+
+
+def runs_of(keys: NDArray[Any]) -> Runs:
+    """Find the stretches of equal keys, so that several quantities are added by them."""
+    start = np.flatnonzero(keys[1:] != keys[:-1]) + 1
+    start = np.concatenate([np.arange(min(keys.size, 1)), start])
+    return Runs(start, keys[start].astype(np.int64), keys.size)
+
+
+def add_up(keys: NDArray[Any] | Runs, values: Floats, n_keys: int, exponent: int) -> Counts:
     """Add values by key, exactly, each rounded once to a whole count.
 
     Parameters
     ----------
-    keys : shape (n,), 0 .. n_keys - 1. values : shape (n,), finite. exponent : from
-        `unit_exponent`.
+    keys : shape (n,), 0 .. n_keys - 1, or their runs. values : shape (n,), finite.
+    exponent : from `unit_exponent`.
 
     Returns
     -------
@@ -49,23 +68,37 @@ def add_up(keys: NDArray[Any], values: Floats, n_keys: int, exponent: int) -> Co
 
     Notes
     -----
-    Each limb is a whole number below 2^24, so that double precision adds 2^29 of them exactly.
+    Each limb is a whole number below 2^32, so that double precision adds `MOST_AT_ONCE` of them
+    exactly, in any order.
     """
+    runs = keys if isinstance(keys, Runs) else runs_of(keys)
     out = np.zeros((n_keys, LIMBS), dtype=np.int64)
-    rest = values
-    for limb in range(LIMBS - 1, -1, -1):
-        step = math.ldexp(1.0, exponent + limb * LIMB_BITS)
-        count = np.rint(rest / step)
-        if limb == LIMBS - 1 and count.size and np.abs(count).max() >= 2**LIMB_BITS:
-            worst = float(np.abs(values).max())
-            raise ValuesError(
-                f"a cell takes up {worst:g} mol per year, over {LARGEST_RATE:g} mol m-2 yr-1",
-                where="the law's result",
-                fix="check the law's parameters and the layers' units",
-            )
-        rest = rest - count * step
-        out[:, limb] = np.bincount(keys, weights=count, minlength=n_keys).astype(np.int64)
+    for first in range(0, runs.size, MOST_AT_ONCE):
+        last = min(first + MOST_AT_ONCE, runs.size)
+        low, high = np.searchsorted(runs.start, (first + 1, last))
+        start = np.concatenate([[0], runs.start[low:high] - first])
+        at = runs.key[low - 1 : high]
+        for limb, counts in enumerate(_limbs(values[first:last], exponent)):
+            summed = np.add.reduceat(counts, start)
+            found = np.bincount(at, weights=summed, minlength=n_keys)
+            out[:, limb] += found.astype(np.int64)
     return out
+
+
+def _limbs(values: Floats, exponent: int) -> tuple[Floats, Floats]:
+    """Split values into whole counts of the unit, low and high limb."""
+    unit = math.ldexp(1.0, exponent)
+    high = np.rint(values * math.ldexp(1.0, -exponent - LIMB_BITS))
+    if max(high.max(), -high.min()) >= 2.0 ** (LIMB_BITS - 1):
+        worst = float(np.abs(values).max())
+        raise ValuesError(
+            f"a cell takes up {worst:g} mol per year, over {LARGEST_RATE:g} mol m-2 yr-1",
+            where="the law's result",
+            fix="check the law's parameters and the layers' units",
+        )
+    low = values - high * (unit * 2.0**LIMB_BITS)
+    low *= 1.0 / unit
+    return np.rint(low, out=low), high
 
 
 def totals(counts: Counts, exponent: int) -> Floats:

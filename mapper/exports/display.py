@@ -13,11 +13,10 @@ import shapely
 from numpy.typing import NDArray
 from rasterio.enums import Resampling
 
-from mapper.engine import Plan, rock_slices
+from mapper.engine import Plan
 from mapper.exports.colours import Stretch, stretch
 from mapper.exports.contents import Contents
 from mapper.grid import Grid, Window, parse_crs, transformer
-from mapper.rocks import ROCK_NAMES
 
 DISPLAY_CELLS = 640_000
 LONGEST_SIDE = 1200
@@ -93,20 +92,16 @@ def dominant_rock(plan: Plan, shape: tuple[int, int]) -> NDArray[np.uint8] | Non
     grid = plan.grid
     if grid.n_cells > ROCK_MAP_CELLS:
         return None
-    whole = np.full(grid.n_cells, NO_ROCK, dtype=np.uint8)
-    most = np.zeros(grid.n_cells, dtype=np.float32)
-    band = max(1, 1_000_000 // grid.n_cols)
-    for row in range(0, grid.n_rows, band):
-        window = Window(row, 0, min(band, grid.n_rows - row), grid.n_cols)
-        rocks = plan.lithology.rock_cells(window)
-        for name, part in rock_slices(rocks):
-            cells = rocks.cell[part] + row * grid.n_cols
-            more = rocks.share[part] > most[cells]
-            most[cells[more]] = rocks.share[part][more]
-            whole[cells[more]] = ROCK_NAMES.index(name)
     rows = _middles(grid.n_rows, shape[0])
     cols = _middles(grid.n_cols, shape[1])
-    return whole.reshape(grid.shape)[np.ix_(rows, cols)]
+    out = np.full((rows.size, cols.size), NO_ROCK, dtype=np.uint8)
+    for at, row in enumerate(rows):  # one row of cells at a time: the grid may be any size
+        rocks = plan.lithology.rock_cells(Window(int(row), 0, 1, grid.n_cols))
+        order = np.lexsort((-rocks.rock, rocks.share))  # the largest share of a cell comes last
+        line = np.full(grid.n_cols, NO_ROCK, dtype=np.uint8)
+        line[rocks.cell[order]] = rocks.rock[order]
+        out[at] = line[cols]
+    return out
 
 
 def _middles(n: int, n_display: int) -> NDArray[np.int64]:

@@ -10,7 +10,6 @@ from dataclasses import asdict
 from pathlib import Path
 from typing import Any
 
-import mapper
 from mapper.accounting import DAYS_PER_YEAR, MOLAR_MASS
 from mapper.engine import Plan
 from mapper.grid import parse_crs
@@ -84,6 +83,7 @@ def describe_plan(plan: Plan) -> dict[str, Any]:
             "lithology": {"how": "polygons" if lithology.polygons else lithology.how},
             **{name: _describe_layer(layer) for name, layer in plan.layers.items()},
         },
+        "notes": list(plan.notes),
         "water_method": plan.water_method if "runoff" not in plan.layers else "runoff given",
         "laws": {rock: _describe_law(one) for rock, one in plan.scheme.by_rock.items()},
         "regions": None
@@ -125,7 +125,10 @@ def _describe_law(one: RockLaw) -> dict[str, Any]:
 
 def versions() -> dict[str, str]:
     """Versions of this tool, of Python and of the libraries that numbers pass through."""
-    found = {"saprolite": mapper.__version__, "python": platform.python_version()}
+    found = {
+        "saprolite": importlib.metadata.version("saprolite"),
+        "python": platform.python_version(),
+    }
     return found | {name: importlib.metadata.version(name) for name in _LIBRARIES}
 
 

@@ -1,5 +1,6 @@
 """The catalogue of rate laws: pure functions of arrays, each with its description."""
 
+from mapper.laws.cap import cap_consumption, cap_law, supply_limit
 from mapper.laws.catalogue import LAWS, NOT_RECOVERED, find_law, load_laws
 from mapper.laws.law import (
     GAS_CONSTANT,
@@ -34,8 +35,11 @@ __all__ = [
     "Response",
     "Spread",
     "Values",
+    "cap_consumption",
+    "cap_law",
     "compose",
     "find_law",
     "find_response",
     "load_laws",
+    "supply_limit",
 ]

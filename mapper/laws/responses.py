@@ -147,7 +147,7 @@ RUNOFF = Input(
     name="runoff",
     low=0.0,
     high=3000.0,
-    range_source="the base rates' own range was not recovered; a bound for most land",
+    range_source="the fitted range was not recovered; a bound for most land",
     range_grade="project",
 )
 TEMPERATURE = Input(
@@ -158,11 +158,7 @@ TEMPERATURE = Input(
     range_grade="project",
 )
 VEGETATION = Input(
-    name="vegetation",
-    low=0.0,
-    high=1.0,
-    range_source="a share",
-    range_grade="project",
+    name="vegetation", low=0.0, high=1.0, range_source="a share", range_grade="project"
 )
 SOIL_SHIELDING = Input(
     name="soil_shielding",

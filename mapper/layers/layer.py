@@ -7,6 +7,7 @@ from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
+from pyproj import Geod
 
 from mapper.errors import GridError, ValuesError
 from mapper.grid import Grid, Window, parse_crs, same_crs, transformer
@@ -80,10 +81,12 @@ class Layer:
         raw, valid = self.source.read(rows, cols)
         values = self.decode(raw, valid)
         if self.how == "same":
+            inside, taken = same_cells(rows), same_cells(cols)
+            if values.shape == window.shape:
+                return np.where(valid, values, np.nan)
             whole = np.full(window.shape, np.nan)
-            inside = np.ix_(rows.nearest >= 0, cols.nearest >= 0)
-            index = np.ix_(rows.nearest[rows.nearest >= 0], cols.nearest[cols.nearest >= 0])
-            whole[inside] = np.where(valid[index], values[index], np.nan)
+            part = np.where(valid, values, np.nan)[inside[1], taken[1]]
+            whole[inside[0], taken[0]] = part
             return whole
         return resample(rows, cols, values, valid, _method(self.how))
 
@@ -114,6 +117,16 @@ class Layer:
         return sample_bilinear(plan, self.source, values, valid)
 
 
+def same_cells(plan: AxisPlan) -> tuple[slice, slice]:
+    """Where a run of the grid's own cells lies in the target and in what was read."""
+    inside = np.flatnonzero(plan.nearest >= 0)
+    if not inside.size:
+        return slice(0, 0), slice(0, 0)
+    first, last = int(inside[0]), int(inside[-1])
+    taken = slice(int(plan.nearest[first]), int(plan.nearest[last]) + 1)
+    return slice(first, last + 1), taken
+
+
 def _method(how: How) -> Method:
     return "nearest" if how in ("same", "points") else how  # type: ignore[return-value]
 
@@ -125,6 +138,8 @@ def _check_plausible(
     band: tuple[float, float],
     what: str,
 ) -> None:
+    if values.size and values.min() >= band[0] and values.max() <= band[1]:
+        return  # most often, and then nothing need be looked at cell by cell
     wrong = valid & ((values < band[0]) | (values > band[1]))
     count = int(wrong.sum())
     if not count:
@@ -174,18 +189,19 @@ def source_grid(source: Source, *, where: str) -> Grid:
 
     Raises GridError where the cells are not all of one size.
     """
-    if not (source.x.is_regular and source.y.is_regular):
+    x, y = source.x, source.y.evened()
+    if not (x.is_regular and y.is_regular):
         raise GridError(
             "cells are not all of one size, so they cannot be the job's grid",
             where=where,
             fix="[grid] with crs, resolution and bounds",
         )
-    dx = float(source.x.edges[-1] - source.x.edges[0]) / source.x.size
-    dy = float(source.y.edges[-1] - source.y.edges[0]) / source.y.size
+    dx = float(x.edges[-1] - x.edges[0]) / x.size
+    dy = float(y.edges[-1] - y.edges[0]) / y.size
     return Grid(
         crs=source.crs,
-        left=float(source.x.edges[0]),
-        top=-float(source.y.edges[0]),
+        left=float(x.edges[0]),
+        top=-float(y.edges[0]),
         dx=dx,
         dy=dy,
         n_rows=source.y.size,
@@ -241,7 +257,8 @@ def how_aligned(source: Source, grid: Grid, resampling: str) -> How:
     """Choose how a source comes onto the grid; ``resampling`` other than "auto" decides."""
     if not same_crs(source.crs, grid.crs):
         return "points"
-    if _same_cells(source.x, grid.left, grid.dx) and _same_cells(source.y, -grid.top, grid.dy):
+    y = source.y.evened()
+    if _same_cells(source.x, grid.left, grid.dx) and _same_cells(y, -grid.top, grid.dy):
         return "same"
     if resampling != "auto":
         return resampling  # type: ignore[return-value]
@@ -270,6 +287,16 @@ def axis_plans(
     return rows, cols
 
 
+def _datum_shift(source: Source, grid: Grid) -> str:
+    """How far the same longitude and latitude lie apart in the two datums, mid-grid."""
+    left, bottom, right, top = grid.bounds
+    x, y = 0.5 * (left + right), 0.5 * (bottom + top)
+    there = transformer(grid.crs, source.crs).transform(x, y)
+    _, _, metres = Geod(ellps="WGS84").inv(x, y, *there)
+    names = parse_crs(source.crs).name, parse_crs(grid.crs).name
+    return f"{names[0]} against {names[1]}: transformed, a shift of {metres:.1f} m mid-grid"
+
+
 def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
     """Bring an opened source onto the grid.
 
@@ -279,6 +306,8 @@ def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
     """
     source = place(source, grid, where=spec.where)
     how = how_aligned(source, grid, spec.resampling)
+    if how == "points" and grid.is_geographic and parse_crs(source.crs).is_geographic:
+        source = replace(source, notes=(*source.notes, _datum_shift(source, grid)))
     unit = spec.units if spec.units is not None else source.unit
     if spec.name == "vegetation" and spec.kind != "cover" and unit is None:
         unit = "1"

@@ -16,7 +16,13 @@ from pyproj.exceptions import CRSError
 from mapper.errors import FileFormatError, GridError, ValuesError
 from mapper.grid import parse_crs
 from mapper.job import LayerSpec
-from mapper.layers.axis import Axis, around_the_earth, axis_from_centres
+from mapper.layers.axis import (
+    Axis,
+    around_the_earth,
+    axis_from_centres,
+    inside_the_poles,
+    one_turn,
+)
 from mapper.layers.source import UNTAGGED_FILLS, Source, take
 
 _LON_LAT = "OGC:CRS84"
@@ -48,15 +54,23 @@ def open_netcdf(spec: LayerSpec) -> Source:
             f"the file cannot be opened as NetCDF: {cause}", where=spec.where, fix="copy it again"
         ) from cause
     variable = _variable(dataset, spec)
+    if variable.dtype.kind not in "iuf":
+        raise FileFormatError(
+            f"variable {variable.name!r} holds {variable.dtype} values",
+            where=spec.where,
+            fix="a variable of real numbers",
+        )
     x_name, y_name = _horizontal(dataset, variable, spec)
     _refuse_other_axes(variable, (x_name, y_name), spec)
     crs = _crs(dataset, variable, x_name, spec)
     geographic = bool(parse_crs(crs).is_geographic)
     x = _axis(dataset, x_name, spec, southing=False, longitude=geographic)
     y = _axis(dataset, y_name, spec, southing=True, longitude=False)
-    x = around_the_earth(x) if geographic else x
-    y = _inside_the_poles(y, spec) if geographic else y
+    if geographic:
+        x = around_the_earth(one_turn(x, spec.registration, where=spec.where))
+        y = inside_the_poles(y, where=spec.where)
     attrs = variable.attrs
+    tagged = _nodata(variable, spec)
     return Source(
         kind="netcdf",
         path=spec.path,
@@ -65,20 +79,26 @@ def open_netcdf(spec: LayerSpec) -> Source:
         x=x,
         y=y,
         dtype=str(variable.dtype),
-        nodata=_nodata(variable, spec),
+        nodata=(*tagged, *UNTAGGED_FILLS) if variable.dtype.kind == "f" else tagged,
+        tagged_nodata=tagged,
         scale=float(attrs.get("scale_factor", 1.0)) if spec.scale is None else spec.scale,
         offset=float(attrs.get("add_offset", 0.0)) if spec.offset is None else spec.offset,
         unit=_text(attrs.get("units")),
         has_mask=False,
         block=_chunk(variable, (y_name, x_name), (y.size, x.size)),
         label=_text(attrs.get("long_name") or attrs.get("standard_name")) or "",
+        valid_range=_valid_range(variable, spec),
     )
 
 
 def _text(value: Any) -> str | None:
     if isinstance(value, bytes):
         return value.decode("latin-1")
-    return None if value is None else str(value)
+    text = None if value is None else str(value)
+    if text is not None and any("\udc80" <= letter <= "\udcff" for letter in text):
+        # bytes that are not UTF-8 arrive as lone surrogates
+        return text.encode("utf-8", "surrogateescape").decode("latin-1")
+    return text
 
 
 def _variable(dataset: xr.Dataset, spec: LayerSpec) -> xr.DataArray:
@@ -214,23 +234,37 @@ def _regularised(centres: NDArray[np.float64]) -> NDArray[np.float64]:
     return even if float(np.abs(even - centres).max()) <= tolerance else centres
 
 
-def _inside_the_poles(y: Axis, spec: LayerSpec) -> Axis:
-    over = float(np.abs(y.edges).max()) - 90.0
-    if over > 0.51 * y.step:
-        raise GridError(
-            f"cells reach {over:g} degrees beyond a pole", where=spec.where, fix="mend latitudes"
-        )
-    return Axis(y.centres, np.clip(y.edges, -90.0, 90.0), y.order, y.period)
-
-
 def _nodata(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, ...]:
     values = list(spec.nodata)
     for key in ("_FillValue", "missing_value"):
         if key in variable.attrs:
-            values.extend(float(one) for one in np.atleast_1d(variable.attrs[key]))
-    if variable.dtype.kind == "f":
-        values.extend(UNTAGGED_FILLS)
+            values.extend(_number(one, key, spec) for one in np.atleast_1d(variable.attrs[key]))
     return tuple(dict.fromkeys(values))
+
+
+def _number(value: Any, key: str, spec: LayerSpec) -> float:
+    try:
+        return float(_text(value) or "")
+    except ValueError as cause:
+        raise ValuesError(
+            f"{key} is {_text(value)!r}, and a number is needed",
+            where=spec.where,
+            fix="mend the attribute, e.g. with ncatted",
+        ) from cause
+
+
+def _valid_range(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, float]:
+    """The attributes valid_min, valid_max or valid_range, which CF states in packed values."""
+    attrs = variable.attrs
+    pair = np.atleast_1d(attrs.get("valid_range", ()))
+    if pair.size == 2:
+        return _number(pair[0], "valid_range", spec), _number(pair[1], "valid_range", spec)
+    low, high = -np.inf, np.inf
+    if "valid_min" in attrs:
+        low = _number(np.atleast_1d(attrs["valid_min"])[0], "valid_min", spec)
+    if "valid_max" in attrs:
+        high = _number(np.atleast_1d(attrs["valid_max"])[0], "valid_max", spec)
+    return low, high
 
 
 def _chunk(

@@ -9,10 +9,10 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.errors import FileFormatError, MissingFileError
+from mapper.errors import FileFormatError, MissingFileError, ValuesError
 from mapper.layers.axis import Axis, AxisPlan, regular_axis
 
-FileKind = Literal["geotiff", "netcdf", "vector"]
+FileKind = Literal["geotiff", "netcdf", "zarr", "vector", "tiles"]
 
 UNTAGGED_FILLS = (9.969209968386869e36,)
 """Values that mean "never written" in NetCDF files even where no tag says so."""
@@ -41,6 +41,8 @@ class Source:
     block: tuple[int, int]
     label: str
     notes: tuple[str, ...] = ()
+    tagged_nodata: tuple[float, ...] = ()
+    valid_range: tuple[float, float] = (-np.inf, np.inf)
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -59,6 +61,10 @@ class Source:
         -------
         Two arrays of shape (rows.stop - rows.start, cols.stop - cols.start).
         """
+        raw, mask = self._read(rows, cols)
+        return raw, mask & self.is_data(raw)
+
+    def _read(self, rows: AxisPlan, cols: AxisPlan) -> tuple[NDArray[Any], NDArray[np.bool_]]:
         if self.kind == "geotiff":
             from mapper.layers.geotiff import read_window  # noqa: PLC0415 - heavy import
         else:
@@ -70,7 +76,11 @@ class Source:
         ]
         raw = np.block([[piece[0] for piece in row] for row in pieces])
         mask = np.block([[piece[1] for piece in row] for row in pieces])
-        return raw, mask & self.is_data(raw)
+        return raw, mask
+
+    def read_raw(self, rows: AxisPlan, cols: AxisPlan) -> NDArray[Any]:
+        """Read raw values alone, whether they are data or not."""
+        return self._read(rows, cols)[0]
 
     def is_data(self, raw: NDArray[Any]) -> NDArray[np.bool_]:
         """Which raw values are data: not a nodata value, not NaN, not infinite."""
@@ -81,7 +91,27 @@ class Source:
             if np.isnan(value):
                 continue
             good &= raw != _as_dtype(value, raw.dtype)
+        low, high = self.valid_range
+        if np.isfinite(low) or np.isfinite(high):
+            good &= (raw >= low) & (raw <= high)
+        if raw.dtype.kind in "iu" and raw.dtype.itemsize == 8:
+            _refuse_inexact(raw, good, self.path)
         return good
+
+
+MOST_EXACT = 2**53
+"""Whole numbers up to here are exact as float64."""
+
+
+def _refuse_inexact(raw: NDArray[Any], good: NDArray[np.bool_], path: str) -> None:
+    wrong = good & ((raw > MOST_EXACT) | (raw < -MOST_EXACT if raw.dtype.kind == "i" else False))
+    if wrong.any():
+        raise ValuesError(
+            f"{int(wrong.sum())} whole numbers are beyond 2**53, for example {raw[wrong][0]}: "
+            "they cannot be held exactly",
+            where=path,
+            fix="nodata = that number if it means no data; else a file of 32-bit numbers",
+        )
 
 
 def _as_dtype(value: float, dtype: np.dtype[Any]) -> Any:
@@ -89,6 +119,8 @@ def _as_dtype(value: float, dtype: np.dtype[Any]) -> Any:
     if dtype.kind == "f":
         with np.errstate(over="ignore"):
             return np.asarray(value).astype(dtype)[()]
+    if not np.isfinite(value):
+        return np.nan
     whole = int(value)
     info = np.iinfo(dtype) if dtype.kind in "iu" else None
     if info is not None and info.min <= whole <= info.max and whole == value:
@@ -138,6 +170,9 @@ _STRANGERS: tuple[tuple[bytes, str], ...] = (
     (b"<", "an XML or HTML text, perhaps an error page"),
     (b"version https://git-lfs", "a pointer to a large file that was not fetched"),
     (b"\x89PNG", "a PNG picture without georeferencing"),
+    (b"\xff\xd8\xff", "a JPEG picture without georeferencing"),
+    (b"\x0e\x03\x13\x01", "HDF4, which is not read here"),
+    (b"GRIB", "GRIB, which is not read here"),
     (b"PK\x03\x04", "a ZIP archive"),
     (b"\x1f\x8b", "a gzip archive"),
 )
