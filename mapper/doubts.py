@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from typing import TYPE_CHECKING, Any, Literal, get_args
+from typing import TYPE_CHECKING, Any
 
 from mapper.errors import JobError
 from mapper.laws import Spread
@@ -12,8 +12,7 @@ from mapper.laws import Spread
 if TYPE_CHECKING:
     from mapper.job import _Table
 
-Method = Literal["latin-hypercube", "sobol"]
-METHODS: tuple[str, ...] = get_args(Method)
+METHODS = ("latin-hypercube",)
 SPREAD_KINDS = ("normal", "lognormal", "uniform", "triangular")
 
 LAYER_SPREADS: Mapping[str, str] = {

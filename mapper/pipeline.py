@@ -13,6 +13,7 @@ from pathlib import Path
 from typing import Any
 
 import dask
+import geopandas as gpd
 import numpy as np
 from dask.callbacks import Callback
 from numpy.typing import NDArray
@@ -51,6 +52,8 @@ from mapper.exports.tables import (
     with_intervals,
 )
 from mapper.grid import Grid, Window, blocks, parse_crs
+from mapper.hotspots import COLUMNS as HOTSPOT_COLUMNS
+from mapper.hotspots import find_hotspots, hotspot_rows
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
@@ -147,9 +150,10 @@ def run(
         spread = None if draws is None else _run_draws(draws, plan, journal, found, engine.threads)
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
         _write_tables(found, spread, ranking, folder)
+        spots = _write_hotspots(job, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
-        contents = Contents(folder, plan, found, _record(job, plan, result))
+        contents = Contents(folder, plan, found, _record(job, plan, result), spots)
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
         _write_record(contents, result)
@@ -405,6 +409,15 @@ def _write_record(contents: Contents, result: RunResult) -> None:
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _write_hotspots(job: Job, folder: Path) -> gpd.GeoDataFrame | None:
+    """Find the hot spots of the drawdown, where the job asks for them."""
+    if job.ranking is None or job.ranking.hotspots is None:
+        return None
+    frame = find_hotspots(folder / "maps" / "drawdown.tif", job.ranking.hotspots)
+    write_csv(folder / "tables" / "hotspots.csv", HOTSPOT_COLUMNS, hotspot_rows(frame))
+    return frame
 
 
 def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:

@@ -2,15 +2,21 @@
 
 from __future__ import annotations
 
+import base64
 import re
+import zlib
 from html.parser import HTMLParser
 from pathlib import Path
 
 import numpy as np
 import pytest
 
+from mapper.exports.colours import Stretch, stretch
 from mapper.exports.contents import read_table
+from mapper.exports.display import DISPLAY_CELLS, DisplayMap, display_shape
+from mapper.exports.page.mapview import packed_values
 from mapper.exports.words import about, clean, number, pretty_unit, script_json
+from mapper.grid import Grid
 
 
 class _Reader(HTMLParser):
@@ -62,10 +68,26 @@ def test_unkind_names_add_no_element_to_the_page(unkind_run: Path, names: tuple[
         assert name[:50].strip() in text
 
 
-def test_the_page_says_that_no_interval_was_asked_for(island_run: Path) -> None:
-    text = (island_run / "report.html").read_text(encoding="utf-8")
+def test_the_page_says_that_no_interval_was_asked_for(unkind_run: Path) -> None:
+    text = (unkind_run / "report.html").read_text(encoding="utf-8")
     assert "No interval was asked for" in text
+    assert "draws = 1000" in text
+
+
+def test_the_answer_carries_its_interval(island_run: Path) -> None:
+    text = (island_run / "report.html").read_text(encoding="utf-8")
+    row = read_table(island_run / "tables" / "regions.csv").by_region["all"]
+    low, high = (about(row[f"drawdown_t_per_yr_{level}"]) for level in ("p05", "p95"))
+    assert "No interval was asked for" not in text
     assert "79,500 t of CO<sub>2</sub> a year" in text
+    assert f"(90\u00a0% interval {low}\u00a0to\u00a0{high})" in text
+
+
+def test_the_page_says_what_drives_the_uncertainty(island_run: Path) -> None:
+    text = (island_run / "report.html").read_text(encoding="utf-8")
+    first = next(iter(read_table(island_run / "tables" / "sensitivity.csv").records()))
+    assert str(first["what"]) in text
+    assert "Rank, 90\u00a0%" in text
 
 
 def test_every_region_of_the_table_is_on_the_page(island_run: Path) -> None:
@@ -79,6 +101,15 @@ def test_every_region_of_the_table_is_on_the_page(island_run: Path) -> None:
 
 def test_the_page_stays_small_whatever_the_grid(island_run: Path) -> None:
     assert (island_run / "report.html").stat().st_size < 2_000_000
+
+
+def test_a_page_of_noise_on_a_large_grid_stays_under_ten_megabytes() -> None:
+    shape = display_shape(Grid("EPSG:4326", -180.0, 90.0, 0.01, 0.01, 18_000, 36_000))
+    assert max(shape) <= 1200
+    assert shape[0] * shape[1] <= DISPLAY_CELLS
+    noise = np.random.default_rng(3).lognormal(1.0, 2.0, shape).astype(np.float32)
+    shown = DisplayMap("any", noise, "", "", stretch(noise))
+    assert len(packed_values(shown)) < 2_000_000  # four such layers and their pictures fit
 
 
 @pytest.mark.parametrize(
@@ -115,13 +146,6 @@ def test_characters_that_xml_forbids_are_replaced() -> None:
 
 
 def test_values_packed_for_reading_are_right_to_one_in_four_thousand() -> None:
-    import base64  # noqa: PLC0415
-    import zlib  # noqa: PLC0415
-
-    from mapper.exports.colours import Stretch  # noqa: PLC0415
-    from mapper.exports.display import DisplayMap  # noqa: PLC0415
-    from mapper.exports.page.mapview import packed_values  # noqa: PLC0415
-
     values = np.array([[0.0, 1e-6, 3.3333], [-2.5, np.nan, 126.79626]], dtype=np.float32)
     shown = DisplayMap("any", values, "", "", Stretch(0.0, 1.0, 1.0))
     planes = np.frombuffer(zlib.decompress(base64.b64decode(packed_values(shown))), np.uint8)
