@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 import dask
+import geopandas as gpd
 import numpy as np
 from dask.callbacks import Callback
 from numpy.typing import NDArray
@@ -167,10 +168,10 @@ def run(
         laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, spread, ranking, folder)
         _write_laws(laws, found.names, folder)
-        _write_hotspots(job, folder)
+        spots = _write_hotspots(job, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking, laws)
-        contents = Contents(folder, plan, found, _record(job, plan, result))
+        contents = Contents(folder, plan, found, _record(job, plan, result), spots)
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
         _write_record(contents, result)
@@ -456,12 +457,13 @@ def _write_record(contents: Contents, result: RunResult) -> None:
     write_json(result.folder / "run.json", _plain(record))
 
 
-def _write_hotspots(job: Job, folder: Path) -> None:
+def _write_hotspots(job: Job, folder: Path) -> gpd.GeoDataFrame | None:
     """Find the hot spots of the drawdown, where the job asks for them."""
     if job.ranking is None or job.ranking.hotspots is None:
-        return
+        return None
     frame = find_hotspots(folder / "maps" / "drawdown.tif", job.ranking.hotspots)
     write_csv(folder / "tables" / "hotspots.csv", HOTSPOT_COLUMNS, hotspot_rows(frame))
+    return frame
 
 
 def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
