@@ -21,6 +21,10 @@ the window that asks for it."""
 ROUNDING = 1e-9
 """Shares within this of 0 or 1 are taken as 0 or 1: coordinates are good to 1e-12 of the grid."""
 
+OVERLAP_TOLERANCE = 1e-6
+"""Part of a cell by which polygons may overlap or gape at a shared border and still be taken to
+meet: coordinates written with seven digits leave such slivers."""
+
 NONE = -1
 MIXED = -2
 
@@ -130,15 +134,24 @@ def _cover_tile(
                  cols.start - tile.col : cols.stop - tile.col]  # fmt: skip
     target = single[rows.start - window.row : rows.stop - window.row,
                     cols.start - window.col : cols.stop - window.col]  # fmt: skip
+    first = (rows.start - window.row) * window.n_cols + cols.start - window.col
+
+    def enter(here: NDArray[np.bool_], polygon: NDArray[Any] | int, share: Floats) -> None:
+        at_row, at_col = np.nonzero(here)
+        if at_row.size:
+            cell = first + at_row * window.n_cols + at_col
+            held = np.broadcast_to(polygon, target.shape)[at_row, at_col].astype(np.int64)
+            pieces.append((cell, held, share[at_row, at_col]))
+            target[at_row, at_col] = MIXED
+
     for position in _touching(polygons.bounds, tile):
         share = cover_tile(polygons.edges[position], tile)[part]
-        target[share == 1.0] = position
-        at_row, at_col = np.nonzero((share > 0.0) & (share < 1.0))
-        if at_row.size:
-            target[at_row, at_col] = MIXED
-            cell = (at_row + rows.start - window.row) * window.n_cols
-            cell += at_col + cols.start - window.col
-            pieces.append((cell, np.full(cell.size, position), share[at_row, at_col]))
+        touched = share > 0.0
+        # a cell that an earlier polygon fills becomes divided: overlaps show as cover above one
+        enter(touched & (target >= 0), target.copy(), np.ones(target.shape))
+        alone = (share == 1.0) & (target == NONE)
+        target[alone] = position
+        enter(touched & ~alone, int(position), share)
 
 
 def _touching(bounds: Floats, tile: Window) -> Ints:

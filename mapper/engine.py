@@ -19,6 +19,8 @@ from mapper.layers.lithology import Lithology, RockCells
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import Alternative, RockLaw, Scheme
+from mapper.states import AXES as STATE_AXES
+from mapper.states import StateCounts, StateLayout, count_states
 from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
@@ -77,6 +79,7 @@ class Plan:
     water_method: str
     scheme: Scheme
     regions: Regions | None
+    notes: tuple[str, ...] = ()
 
     @property
     def n_regions(self) -> int:
@@ -195,19 +198,75 @@ def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
 
 def evaluate_block(plan: Plan, window: Window) -> tuple[BlockMaps, BlockSums]:
     """Read, align and evaluate one block: its part of each map, and its sums."""
+    maps, sums, _ = evaluate_block_states(plan, window, None)
+    return maps, sums
+
+
+def evaluate_block_states(
+    plan: Plan, window: Window, layout: StateLayout | None
+) -> tuple[BlockMaps, BlockSums, StateCounts | None]:
+    """Evaluate one block, and count the area in each state where a layout is given."""
     rocks = plan.lithology.rock_cells(window)
     inputs = read_inputs(plan, window)
-    rate, flags = _evaluate_entries(plan.scheme, rocks, inputs)
-    maps = _to_cells(rocks, rate, flags, window)
+    result = RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))
+    maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
-    result = RockResult(rate, flags)
-    sums = _sum_block(plan, rocks, result, (regions, areas, maps))
+    ground = _split_ground(rocks, regions, areas)
+    sums = _sum_block(plan, result, ground, (regions, areas, maps))
     laws = [
-        _sum_alternative(plan, rocks, _replace_entries(one, rocks, inputs, result), regions, areas)
+        _sum_alternative(plan, _replace_entries(one, rocks, inputs, result), ground)
         for one in plan.scheme.alternatives
     ]
-    return maps, sums._replace(laws=np.stack(laws)) if laws else sums
+    sums = sums._replace(laws=np.stack(laws)) if laws else sums
+    if layout is None:
+        return maps, sums, None
+    return maps, sums, _count_block(plan, layout, result, ground, inputs)
+
+
+class _Ground(NamedTuple):
+    """Pieces of ground: position of the entry, cell, region * N_ROCKS + rock, and area [m2]."""
+
+    entry: Ints
+    cell: Ints
+    key: Ints
+    area: Floats
+
+
+def _split_ground(rocks: RockCells, regions: RegionCells, areas: Floats) -> _Ground:
+    pieces = regions.split(rocks.cell)
+    cell = rocks.cell[pieces.entry]
+    key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
+    return _Ground(pieces.entry, cell, key, areas[cell] * rocks.share[pieces.entry] * pieces.part)
+
+
+def _count_block(
+    plan: Plan,
+    layout: StateLayout,
+    result: RockResult,
+    ground: _Ground,
+    inputs: Mapping[str, Floats],
+) -> StateCounts:
+    """Count the states of the pieces that weather and have a result."""
+    laws = [plan.scheme.by_rock.get(name) for name in ROCK_NAMES]
+    weathers = np.array([one is not None for one in laws])
+    rock = (ground.key % N_ROCKS).astype(np.int8)
+    chosen = weathers[rock] & ~np.isnan(result.rate)[ground.entry]
+    cell, key, area = ground.cell, ground.key, ground.area
+    if not chosen.all():
+        cell, key, area, rock = cell[chosen], key[chosen], area[chosen], rock[chosen]
+    places: dict[str, NDArray[np.int32]] = {}
+    for name in layout.names:
+        reads = np.array([one is None or name in one.law.input_names for one in laws])
+        places[name] = STATE_AXES[name].place(inputs[name])[cell]
+        if not reads.all():
+            places[name] *= reads[rock]
+    return count_states(layout, key, area, places, unit_exponent(plan.grid))
+
+
+def state_layout(plan: Plan) -> StateLayout:
+    """Which layers the states of a plan are made of."""
+    return StateLayout(plan.scheme.input_names(), N_ROCKS)
 
 
 def _replace_entries(
@@ -224,23 +283,18 @@ def _replace_entries(
     return RockResult(rate, flags)
 
 
-def _sum_alternative(
-    plan: Plan, rocks: RockCells, result: RockResult, regions: RegionCells, areas: Floats
-) -> Counts:
+def _sum_alternative(plan: Plan, result: RockResult, ground: _Ground) -> Counts:
     """Add up consumption, area with a result and area outside the range, by region and rock."""
     exponent = unit_exponent(plan.grid)
-    pieces = regions.split(rocks.cell)
-    entry = pieces.entry
-    key = pieces.region * N_ROCKS + rocks.rock[entry]
-    held = areas[rocks.cell[entry]] * rocks.share[entry] * pieces.part
-    rate, flags = result.rate[entry], result.flags[entry]
+    held = ground.area
+    rate, flags = result.rate[ground.entry], result.flags[ground.entry]
     good = ~np.isnan(rate)
     rows = (
         np.where(good, rate, 0.0) * held,
         np.where(good, held, 0.0),
         np.where((flags & _bit(OUTSIDE_RANGE)) != 0, held, 0.0),
     )
-    runs = runs_of(key)
+    runs = runs_of(ground.key)
     n_keys = plan.n_regions * N_ROCKS
     shape = (plan.n_regions, N_ROCKS, LIMBS)
     return np.stack([add_up(runs, row, n_keys, exponent).reshape(shape) for row in rows])
@@ -308,24 +362,21 @@ def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> Bl
 
 def _sum_block(
     plan: Plan,
-    rocks: RockCells,
     result: RockResult,
-    ground: tuple[RegionCells, Floats, BlockMaps],
+    ground: _Ground,
+    cells: tuple[RegionCells, Floats, BlockMaps],
 ) -> BlockSums:
-    regions, areas, maps = ground
+    regions, areas, maps = cells
     exponent = unit_exponent(plan.grid)
     n_regions = plan.n_regions
     every = regions.split(np.arange(areas.size))
     area = add_up(every.region, areas[every.entry] * every.part, n_regions, exponent)
-    pieces = regions.split(rocks.cell)
-    entry = pieces.entry
-    key = pieces.region * N_ROCKS + rocks.rock[entry]
-    held = areas[rocks.cell[entry]] * rocks.share[entry] * pieces.part
-    rate = result.rate[entry]
+    key, held = ground.key, ground.area
+    rate = result.rate[ground.entry]
     good = ~np.isnan(rate)
     n_keys = n_regions * N_ROCKS
     shape = (n_regions, N_ROCKS, LIMBS)
-    flags = result.flags[entry]
+    flags = result.flags[ground.entry]
     runs = runs_of(key)
     rock_area = valid_area = add_up(runs, held, n_keys, exponent)
     if not good.all():

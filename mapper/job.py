@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import json
 import math
 import os
 import re
@@ -12,6 +13,13 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from mapper.doubts import (
+    RankingSpec,
+    UncertaintySpec,
+    ranking_spec,
+    spread_of,
+    uncertainty_spec,
+)
 from mapper.errors import JobError, MissingFileError, Problems
 from mapper.laws import CAP, Spread
 from mapper.rocks import ROCK_NAMES
@@ -31,8 +39,11 @@ LAYER_NAMES = (
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
 RUNOFF_METHODS = ("turc-1954", "turc-pike")
+REGISTRATIONS = ("cell", "node")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
+WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
+ALSO = ("netcdf", "geoparquet")
 CAPS = ("none", CAP)
 
 
@@ -56,6 +67,9 @@ class LayerSpec:
     offset: float | None = None
     nodata: tuple[float, ...] = ()
     resampling: str = "auto"
+    registration: str | None = None
+    paths: tuple[str, ...] = ()
+    years: tuple[int, int] | None = None
 
     @property
     def where(self) -> str:
@@ -75,11 +89,15 @@ class GridSpec:
 
 @dataclass(frozen=True, kw_only=True)
 class ParameterSpec:
-    """A parameter that the job sets: a value for all rocks, or one for each, and a spread."""
+    """A parameter that the job sets: a value for all rocks, or one for each, and a spread.
+
+    ``per_rock`` is None where the job does not say whether each rock is drawn for itself.
+    """
 
     value: float | None = None
     by_rock: Mapping[str, float] = field(default_factory=dict)
     spread: Spread | None = None
+    per_rock: bool | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -137,6 +155,9 @@ class Job:
     law: LawSpec
     regions: RegionsSpec | None
     folder: str
+    uncertainty: UncertaintySpec | None = None
+    ranking: RankingSpec | None = None
+    write: tuple[str, ...] = WRITTEN
 
 
 def load_job(path: str | Path) -> Job:
@@ -151,6 +172,25 @@ def load_job(path: str | Path) -> Job:
     ------
     MissingFileError, JobError, or ManyProblemsError with every problem that the file itself has.
     """
+    job, problems = read_job(path)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
+
+
+def read_job(path: str | Path) -> tuple[Job | None, Problems]:
+    """Read a job file with its problems, so that more can be gathered before they are raised.
+
+    Returns
+    -------
+    The job, wrong values replaced by defaults, or None where so much is missing that nothing
+    more can be looked at; and the problems.
+
+    Raises
+    ------
+    MissingFileError, JobError where the file cannot be read at all.
+    """
     path = Path(path).absolute()
     table = _read_toml(path)
     problems = Problems()
@@ -164,11 +204,17 @@ def load_job(path: str | Path) -> Job:
         water_method=root.table("water").choice("method", RUNOFF_METHODS, default="turc-1954"),
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
-        folder=_output_folder(root.table("output"), folder, path.stem),
+        uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
+        ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
+        **_output(root.table("output"), folder, path.stem),
     )
+    root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
-    problems.raise_if_any()
-    return job
+    paths = [one.path for one in job.layers.values()]
+    paths += [job.regions.path, job.regions.id] if job.regions is not None else []
+    lithology = job.layers.get("lithology")
+    enough = all(paths) and lithology is not None and bool(lithology.legend)
+    return (job if enough else None), problems
 
 
 def _read_toml(path: Path) -> dict[str, Any]:
@@ -256,6 +302,19 @@ class _Table:
             return default
         return value
 
+    def choices(
+        self, key: str, among: tuple[str, ...], *, default: tuple[str, ...]
+    ) -> tuple[str, ...]:
+        value = self._take(key)
+        if value is None:
+            return default
+        listed = value if isinstance(value, list) else [value]
+        if any(one not in among for one in listed):
+            needed = "a list of " + ", ".join(among)
+            self.wrong(key, needed, f"{key} = {json.dumps(list(among))}")
+            return default
+        return tuple(listed)
+
     def number(self, key: str) -> float | None:
         value = self._take(key)
         if value is None:
@@ -268,6 +327,22 @@ class _Table:
             return None
         return float(value)
 
+    def flag(self, key: str) -> bool | None:
+        value = self._take(key)
+        if value is None or isinstance(value, bool):
+            return value
+        self.wrong(key, "true or false", f"{key} = true")
+        return None
+
+    def whole(self, key: str, *, default: int, least: int) -> int:
+        value = self._take(key)
+        if value is None:
+            return default
+        if isinstance(value, bool) or not isinstance(value, int) or value < least:
+            self.wrong(key, f"a whole number of {least} or more", f"{key} = {max(default, least)}")
+            return default
+        return value
+
     def numbers(self, key: str, count: int | None, example: str) -> tuple[float, ...] | None:
         value = self._take(key)
         if value is None:
@@ -276,6 +351,9 @@ class _Table:
         good = all(isinstance(one, int | float) and not isinstance(one, bool) for one in listed)
         if not good or (count is not None and len(listed) != count):
             self.wrong(key, f"{count or 'some'} numbers", f"{key} = {example}")
+            return None
+        if key != "nodata" and not all(math.isfinite(one) for one in listed):
+            self.wrong(key, "finite numbers", f"{key} = {example}")
             return None
         return tuple(float(one) for one in listed)
 
@@ -333,9 +411,12 @@ def _grid_spec(table: _Table) -> GridSpec:
     crs = table.optional_text("crs")
     resolution = table.numbers("resolution", None, "0.1")
     bounds = table.numbers("bounds", 4, "[left, bottom, right, top]")
-    if resolution is not None and (len(resolution) > 2 or min(resolution) <= 0):
+    if resolution is not None and not _is_resolution(resolution):
         table.wrong("resolution", "one or two positive numbers", "resolution = 0.1")
         resolution = None
+    if bounds is not None and not all(math.isfinite(one) for one in bounds):
+        table.wrong("bounds", "four finite numbers", "bounds = [-10, 40, 5, 50]")
+        bounds = None
     if bounds is not None and not (bounds[0] < bounds[2] and bounds[1] < bounds[3]):
         table.wrong("bounds", "left < right and bottom < top", "bounds = [-10, 40, 5, 50]")
         bounds = None
@@ -345,6 +426,11 @@ def _grid_spec(table: _Table) -> GridSpec:
         resolution=None if resolution is None else (resolution[0], resolution[-1]),
         bounds=None if bounds is None else (bounds[0], bounds[1], bounds[2], bounds[3]),
     )
+
+
+def _is_resolution(numbers: tuple[float, ...]) -> bool:
+    good = all(math.isfinite(one) and one > 0 for one in numbers)
+    return good and len(numbers) in (1, 2)
 
 
 def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
@@ -365,14 +451,16 @@ def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
 
 def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
     lithology = name == "lithology"
-    path = _absolute(table.needed_text("path", '"file.tif"'), folder, table)
+    paths = _paths(table, folder)
     common: dict[str, Any] = {
         "name": name,
-        "path": path,
+        "path": paths[0],
+        "paths": paths,
         "variable": table.optional_text("variable"),
         "sheet": table.optional_text("layer"),
         "crs": table.optional_text("crs"),
         "nodata": table.numbers("nodata", None, "-9999") or (),
+        "registration": _registration(table),
     }
     if lithology:
         legend = table.needed_text("legend", '"legend.csv"')
@@ -394,10 +482,47 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         **common,
         **vegetation,
         units=table.optional_text("units"),
+        years=_years(table),
         scale=table.number("scale"),
         offset=table.number("offset"),
         resampling=table.choice("resampling", RESAMPLING, default="auto"),
     )
+
+
+def _paths(table: _Table, folder: Path) -> tuple[str, ...]:
+    """One path, several in a list, or a pattern with ``*`` for files side by side."""
+    value = table.values.get("path")
+    if not isinstance(value, list):
+        text = table.needed_text("path", '"file.tif"')
+        path = _absolute(text, folder, table)
+        if "*" not in text:
+            return (path,)
+        found = sorted(str(one) for one in Path(path).parent.glob(Path(path).name))
+        if not found:
+            table.wrong("path", "a pattern that some file matches", 'path = "tiles/*.tif"')
+        return tuple(found) or ("",)
+    table.known.append("path")
+    if not value or not all(isinstance(one, str) and one.strip() for one in value):
+        table.wrong("path", "a list of file names", 'path = ["west.tif", "east.tif"]')
+        return ("",)
+    return tuple(_absolute(one, folder, table) for one in value)
+
+
+def _years(table: _Table) -> tuple[int, int] | None:
+    pair = table.numbers("years", 2, "[1991, 2020]")
+    if pair is None:
+        return None
+    if any(one != int(one) for one in pair) or pair[0] > pair[1]:
+        table.wrong("years", "a first and a last year", "years = [1991, 2020]")
+        return None
+    return int(pair[0]), int(pair[1])
+
+
+def _registration(table: _Table) -> str | None:
+    if "registration" not in table.values:
+        table.known.append("registration")
+        return None
+    return table.choice("registration", REGISTRATIONS, default="cell")
 
 
 def _law_spec(table: _Table) -> LawSpec:
@@ -461,10 +586,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
         return ParameterSpec(value=parent.number(name))
     table = parent.table(name)
     value = table.number("value")
-    sd = table.number("sd")
-    if sd is not None and sd < 0:
-        table.wrong("sd", "a spread of zero or more", "sd = 8.0")
-        sd = None
+    spread = spread_of(table, default="normal")
+    per_rock = table.flag("per_rock")
     rocks = table.table("by_rock")
     for rock in rocks.values:
         if rock not in ROCK_NAMES:
@@ -474,7 +597,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
     return ParameterSpec(
         value=value,
         by_rock={key: one for key, one in values.items() if one is not None},
-        spread=None if sd is None else Spread(kind="normal", sd=sd),
+        spread=spread,
+        per_rock=per_rock,
     )
 
 
@@ -488,6 +612,8 @@ def _regions_spec(table: _Table, folder: Path) -> RegionsSpec:
     )
 
 
-def _output_folder(table: _Table, folder: Path, stem: str) -> str:
+def _output(table: _Table, folder: Path, stem: str) -> dict[str, Any]:
     text = table.text("folder", default=f"out/{stem}")
-    return _absolute(text, folder, table)
+    write = table.choices("write", WRITTEN, default=WRITTEN)
+    also = table.choices("also", ALSO, default=())
+    return {"folder": _absolute(text, folder, table), "write": (*write, *also)}

@@ -5,6 +5,8 @@ from __future__ import annotations
 import json
 import os
 import shutil
+import socket
+import threading
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -16,6 +18,7 @@ from numpy.typing import NDArray
 from mapper.errors import RunFolderError
 
 WORK = ".work"
+MOST_NAMED = 12  # of the things that changed, in a message
 
 
 @dataclass(frozen=True)
@@ -40,7 +43,9 @@ class Journal:
     def save(self, index: int, arrays: Mapping[str, NDArray[Any]]) -> None:
         """Write one block under a temporary name and rename it."""
         final = self.block(index)
-        temporary = final.with_name(f".{os.getpid()}-{final.name}")
+        temporary = final.with_name(
+            f".{socket.gethostname()}-{os.getpid()}-{threading.get_ident()}-{final.name}"
+        )
         try:
             with temporary.open("wb") as stream:
                 np.savez(stream, allow_pickle=False, **arrays)
@@ -95,7 +100,8 @@ def _refuse_changes(old: Mapping[str, Any], new: Mapping[str, Any], folder: Path
     if changed:
         raise RunFolderError(
             "the folder holds an unfinished run of another job; changed since: "
-            + ", ".join(changed),
+            + ", ".join(changed[:MOST_NAMED])
+            + (f" and {len(changed) - MOST_NAMED} more" if len(changed) > MOST_NAMED else ""),
             where=str(folder),
             fix="--fresh to start over, or --out DIR for another folder",
         )

@@ -5,17 +5,19 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
 
 from mapper.coverage import polygons_on
 from mapper.engine import Plan
-from mapper.errors import GridError, JobError, Problems
+from mapper.errors import GridError, JobError, MapperError, Problems
 from mapper.grid import Grid, Window, blocks, parse_crs, same_crs
-from mapper.job import GridSpec, Job, LayerSpec
+from mapper.job import GridSpec, Job, LayerSpec, read_job
 from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
 from mapper.layers.lithology import Lithology, unknown_codes
+from mapper.layers.oddities import odd_values
 from mapper.layers.source import Source, file_kind
 from mapper.layers.vector import read_vector, reproject, valid_shapes
 from mapper.layers.warp import subdivisions
@@ -23,7 +25,11 @@ from mapper.legend import Legend, normal_code, read_legend
 from mapper.regions import Regions, open_regions
 from mapper.scheme import Scheme, build_scheme
 
-BLOCK_CELLS = 2**20
+LARGEST_SIDE = 1024
+SMALLEST_SIDE = 128
+DEFAULT_MEMORY = 2e9
+BASE_MEMORY = 6e8  # the libraries, GDAL's cache and the assembly of maps, measured
+BYTES_PER_CELL = 400.0  # arrays alive at once while a block is evaluated, measured
 MOST_SAMPLED_CELLS = 2**22
 SAMPLE_SIDE = 256
 
@@ -36,6 +42,23 @@ class Sample:
     median: float
     high: float
     coverage: float
+
+
+def open_job(path: str | Path) -> Job:
+    """Read a job file; where it has problems, look for those of the files that it names too.
+
+    Raises
+    ------
+    MapperError, or ManyProblemsError with every problem that can be found before the run.
+    """
+    job, problems = read_job(path)
+    if job is not None and problems.found:
+        with problems.gather():
+            make_plan(job)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
 
 
 def make_plan(job: Job) -> Plan:
@@ -58,9 +81,12 @@ def make_plan(job: Job) -> Plan:
             scheme = build_scheme(job, legend.rocks())
             _check_layers(job, scheme)
     grid: Grid | None = None
+    wrong_files = len(problems.found)
     with problems.gather():
         grid = _choose_grid(job, sources)
     if grid is None:
+        if wrong_files and len(sources) < len(job.layers):
+            problems.found.pop()  # no grid because a file is wrong: the file is what to mend
         problems.raise_if_any()
         raise AssertionError
     layers = _open_layers(job, sources, grid, problems)
@@ -69,25 +95,42 @@ def make_plan(job: Job) -> Plan:
     if job.regions is not None:
         with problems.gather():
             regions = open_regions(job.regions, grid)
+    notes: list[str] = []
     if lithology is not None:
-        _check_codes(lithology, problems)
+        notes += _check_codes(lithology, problems)
+        if lithology.source is not None:
+            notes += [f"lithology: {note}" for note in lithology.source.notes]
     for layer in layers.values():
         with problems.gather():
             sample_layer(layer)
+            found = (*layer.source.notes, *odd_values(layer))
+            notes += [f"{layer.name}: {note}" for note in found]
     problems.raise_if_any()
     if lithology is None or scheme is None:  # pragma: no cover - then a problem was raised
         raise AssertionError
-    return Plan(grid, lithology, layers, job.water_method, scheme, regions)
+    return Plan(grid, lithology, layers, job.water_method, scheme, regions, tuple(notes))
 
 
 def _open_sources(job: Job, problems: Problems) -> dict[str, Source]:
     sources: dict[str, Source] = {}
     for name, spec in job.layers.items():
         with problems.gather():
-            if name == "lithology" and file_kind(spec.path, where=spec.where) == "vector":
+            if name == "lithology" and _is_polygons(spec):
                 continue
             sources[name] = open_source(spec)
     return sources
+
+
+def _is_polygons(spec: LayerSpec) -> bool:
+    return file_kind(spec.path, where=spec.where) == "vector"
+
+
+def _polygons_or_wrong(spec: LayerSpec) -> bool:
+    """Whether the lithology is polygons; false too where its file is wrong, noted already."""
+    try:
+        return _is_polygons(spec)
+    except MapperError:
+        return False
 
 
 def _check_layers(job: Job, scheme: Scheme) -> None:
@@ -114,8 +157,14 @@ def _check_layers(job: Job, scheme: Scheme) -> None:
 
 def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
     spec = job.grid
-    if spec.resolution is not None:
-        return _spelled_grid(spec, job)
+    if spec.resolution is not None or spec.crs is not None:
+        return _once_round(_spelled_grid(spec, job), job)
+    if not sources and spec.take_from is None:
+        raise JobError(
+            "no layer is a grid, so the job's grid must be spelled out",
+            where=f"{job.path}, grid",
+            fix='[grid] with crs = "EPSG:4326", resolution = 0.1, bounds = [left, ... top]',
+        )
     name = spec.take_from or ("lithology" if "lithology" in sources else _finest(sources))
     if name not in job.layers:
         raise JobError(
@@ -124,11 +173,30 @@ def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
             fix="one of: " + ", ".join(job.layers),
         )
     if name not in sources:
-        return None
-    return _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+        raise JobError(
+            f"the grid cannot be taken from layer {name!r}, which is no grid or could not be read",
+            where=f"{job.path}, grid",
+            fix="[grid] from = another layer, or crs, resolution and bounds",
+        )
+    grid = _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+    return _once_round(grid, job)
+
+
+def _once_round(grid: Grid, job: Job) -> Grid:
+    """The grid itself; refuses one that goes round the earth more than once."""
+    width = grid.dx * grid.n_cols
+    if grid.is_geographic and width > 360.0 * (1 + 1e-9):
+        raise GridError(
+            f"the grid spans {width:g} degrees of longitude: ground would count twice",
+            where=f"{job.path}, grid",
+            fix="[grid] bounds of at most 360 degrees",
+        )
+    return grid
 
 
 def _finest(sources: Mapping[str, Source]) -> str:
+    if not sources:
+        return "lithology"
     geographic = {name: bool(parse_crs(one.crs).is_geographic) for name, one in sources.items()}
     return min(
         sources, key=lambda name: sources[name].x.step * (1 if not geographic[name] else 1e5)
@@ -144,7 +212,15 @@ def _spelled_grid(spec: GridSpec, job: Job) -> Grid:
         )
     left, bottom, right, top = spec.bounds
     dx, dy = spec.resolution
-    n_cols, n_rows = max(1, round((right - left) / dx)), max(1, round((top - bottom) / dy))
+    n_cols, n_rows = round((right - left) / dx), round((top - bottom) / dy)
+    off = max(abs((right - left) / dx - n_cols), abs((top - bottom) / dy - n_rows))
+    if off > 1e-6 * max(n_cols, n_rows, 1) or not n_cols or not n_rows:
+        raise GridError(
+            f"bounds {list(spec.bounds)} do not hold a whole number of cells of {dx:g} x {dy:g}",
+            where=f"{job.path}, grid.bounds",
+            fix=f"bounds = [{left:g}, {top - dy * max(n_rows, 1):g}, "
+            f"{left + dx * max(n_cols, 1):g}, {top:g}]",
+        )
     return Grid(parse_crs(spec.crs).to_wkt(), left, top, dx, dy, n_rows, n_cols)
 
 
@@ -196,6 +272,8 @@ def _lithology(
         return None
     with problems.gather():
         if "lithology" not in sources:
+            if not _polygons_or_wrong(spec):
+                return None
             return _from_polygons(spec, legend, grid)
         source = place(sources["lithology"], grid, where=spec.where)
         if not source.is_integer and np.dtype(source.dtype).kind != "f":  # pragma: no cover
@@ -229,23 +307,37 @@ def _from_polygons(spec: LayerSpec, legend: Legend, grid: Grid) -> Lithology | N
     return Lithology(spec, legend, grid, "mean", polygons=polygons_on(grid, names, shapes))
 
 
-def _check_codes(lithology: Lithology, problems: Problems) -> None:
-    """Look for codes that the legend lacks, on the whole of a small map, else on samples."""
-    if lithology.spec.unknown != "error":
-        return
+def _check_codes(lithology: Lithology, problems: Problems) -> list[str]:
+    """Look for codes that the legend lacks, on the whole of a small map, else on samples.
+
+    Returns notes on codes of the legend that a map seen as a whole does not hold.
+    """
     lenient = replace(lithology, spec=replace(lithology.spec, unknown="nodata"))
-    found: dict[str, float] = {}
+    found: dict[str, NDArray[np.float64]] = {}
+    whole = True
     for window in sample_windows(lithology.grid):
+        whole = False
         with problems.gather():
-            for code, cells in lenient.codes_in(window).items():
-                found[code] = found.get(code, 0.0) + cells
-    missing = [
-        f"{code} ({cells:.0f} cells)"
-        for code, cells in found.items()
-        if normal_code(code) not in lithology.legend.mixtures
-    ]
-    if missing:
+            for code, seen in lenient.codes_in(window).items():
+                found[code] = found.get(code, np.zeros(2)) + seen
+            whole = True
+        if not whole:
+            return []
+    known = lithology.legend.mixtures
+    missing = {code: seen for code, seen in found.items() if normal_code(code) not in known}
+    if missing and lithology.spec.unknown == "error":
         problems.add(unknown_codes(missing, lithology.spec, lithology.legend))
+    if lithology.grid.n_cells > MOST_SAMPLED_CELLS:
+        return []
+    seen_codes = {normal_code(code) for code in found}
+    absent = [code for code in known if code not in seen_codes]
+    if not absent:
+        return []
+    return [f"lithology: {len(absent)} codes of the legend are not on the map: {_few(absent)}"]
+
+
+def _few(names: list[str]) -> str:
+    return ", ".join(names[:8]) + (" ..." if len(names) > 8 else "")
 
 
 def sample_windows(grid: Grid) -> list[Window]:
@@ -278,8 +370,13 @@ def sample_layer(layer: Layer) -> Sample:
     )
 
 
-def block_shape(plan: Plan) -> tuple[int, int]:
-    """Rows and columns of a block: squares, or bands where the largest file lies in strips."""
+def block_shape(plan: Plan, threads: int = 2, memory: float = DEFAULT_MEMORY) -> tuple[int, int]:
+    """Rows and columns of a block: squares, or bands where the largest file lies in strips.
+
+    As many cells as the memory holds for all threads together, up to `LARGEST_SIDE` squared.
+    """
+    room = max(memory - BASE_MEMORY, 0.0) / (threads * BYTES_PER_CELL)
+    side = int(np.clip(2.0 ** np.floor(np.log2(max(room, 1.0)) / 2), SMALLEST_SIDE, LARGEST_SIDE))
     sources = [layer.source for layer in plan.layers.values()]
     if plan.lithology.source is not None:
         sources.append(plan.lithology.source)
@@ -287,5 +384,5 @@ def block_shape(plan: Plan) -> tuple[int, int]:
     grid = plan.grid
     strips = largest.block[1] >= largest.x.size and largest.x.size > 1024
     if strips and largest.block[0] < 1024:
-        return max(1, min(grid.n_rows, BLOCK_CELLS // grid.n_cols)), grid.n_cols
-    return min(grid.n_rows, 1024), min(grid.n_cols, 1024)
+        return max(1, min(grid.n_rows, side**2 // grid.n_cols)), grid.n_cols
+    return min(grid.n_rows, side), min(grid.n_cols, side)

@@ -51,6 +51,17 @@ class Axis:
         sizes = np.diff(self.edges)
         return bool(np.ptp(sizes) <= 1e-3 * self.step)
 
+    def evened(self) -> Axis:
+        """The same cells with the outer two as wide as their neighbours, where a pole cut them."""
+        if self.size < 3:
+            return self
+        edges = self.edges.copy()
+        if edges[0] == -90.0 and edges[1] - edges[0] < self.step:
+            edges[0] = edges[1] - self.step
+        if edges[-1] == 90.0 and edges[-1] - edges[-2] < self.step:
+            edges[-1] = edges[-2] + self.step
+        return Axis(self.centres, edges, self.order, self.period)
+
     def shifted(self, by: float) -> Axis:
         """The same cells, ``by`` further along."""
         return Axis(self.centres + by, self.edges + by, self.order, self.period)
@@ -143,6 +154,45 @@ def around_the_earth(axis: Axis) -> Axis:
     return axis
 
 
+def inside_the_poles(y: Axis, *, where: str) -> Axis:
+    """Clip a latitude axis whose outer cells reach up to half a cell beyond a pole.
+
+    Raises GridError where they reach further.
+    """
+    over = float(np.abs(y.edges).max()) - 90.0
+    if over > 0.51 * y.step:
+        raise GridError(
+            f"cells reach {over:g} degrees beyond a pole (cells of {y.step:g})",
+            where=where,
+            fix="mend latitudes: cell edges within -90 and 90",
+        )
+    edges = np.clip(y.edges, -90.0, 90.0)
+    return Axis(np.clip(y.centres, -90.0, 90.0), edges, y.order, y.period)
+
+
+def one_turn(axis: Axis, registration: str | None, *, where: str) -> Axis:
+    """Drop the last column of a node-registered longitude axis, which repeats the first.
+
+    Raises GridError where an axis is longer than a turn and the job does not say why.
+    """
+    over = float(axis.edges[-1] - axis.edges[0]) - 360.0
+    if over <= 0.01 * axis.step:
+        return axis
+    if abs(over - axis.step) > 0.01 * axis.step:
+        raise GridError(
+            f"longitudes span {360.0 + over:g} degrees, more than a turn",
+            where=where,
+            fix="a file of at most 360 degrees of longitude",
+        )
+    if registration != "node":
+        raise GridError(
+            f"longitudes span {360.0 + over:g} degrees: the last column seems to repeat the first",
+            where=where,
+            fix='registration = "node" if values stand at the nodes of the grid',
+        )
+    return Axis(axis.centres[:-1], axis.edges[:-1], axis.order[:-1], axis.period)
+
+
 def nearest_turn(axis: Axis, low: float, high: float) -> Axis:
     """Shift a longitude axis by whole turns to where it overlaps ``low`` to ``high`` most."""
     if axis.period:
@@ -204,6 +254,13 @@ def plan_axis(
         weights = _picks(nearest, centres.size)
     file_index = axis.order[np.arange(first, last) % axis.size]
     return AxisPlan(first, last, weights, nearest.astype(np.int64), file_index)
+
+
+def whole_axis(axis: Axis, start: int = 0, stop: int | None = None) -> AxisPlan:
+    """A plan that reads an axis as it is, all of it or a stretch."""
+    order = axis.order[start:stop]
+    empty = sparse.csr_matrix((0, order.size), dtype=np.float64)
+    return AxisPlan(start, start + order.size, empty, np.empty(0, dtype=np.int64), order)
 
 
 def _extended(axis: Axis) -> tuple[Floats, Floats]:

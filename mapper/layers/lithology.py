@@ -4,26 +4,29 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.coverage import Polygons, cover_window
-from mapper.errors import LegendError
-from mapper.grid import Grid, Window
+from mapper.coverage import OVERLAP_TOLERANCE, Polygons, cover_window
+from mapper.errors import LegendError, RegionError, ValuesError
+from mapper.grid import Grid, Window, cell_areas
 from mapper.job import LayerSpec
 from mapper.layers.layer import How, axis_plans, same_cells
 from mapper.layers.resample import LEAST_SHARE, class_shares
-from mapper.layers.source import Source
+from mapper.layers.source import MOST_EXACT, Source
 from mapper.layers.warp import plan_points
-from mapper.legend import Legend, normal_code
+from mapper.legend import Legend, normal_code, suggest_rock
 from mapper.rocks import ROCK_NAMES
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 MOST_COUNTED_CODES = 2**16  # a wider span of codes is sorted instead of counted
+
+MOST_LISTED = 12
+"""Codes that a message lists."""
 
 
 class RockCells(NamedTuple):
@@ -60,17 +63,23 @@ class Lithology:
         cells, codes, shares, names = self._coded(window)
         return _to_rocks(cells, codes, shares, self._mixtures(names, codes, window))
 
-    def codes_in(self, window: Window) -> Mapping[str, float]:
-        """Each code or name in a window, and how many cells it fills."""
-        _, codes, shares, names = self._coded(window)
-        cells = np.bincount(codes, weights=shares, minlength=len(names))
-        return {name: float(count) for name, count in zip(names, cells, strict=True) if count > 0}
+    def codes_in(self, window: Window) -> Mapping[str, Floats]:
+        """Each code or name in a window: how many cells it fills, and their area [m2]."""
+        cells, codes, shares, names = self._coded(window)
+        areas = np.broadcast_to(cell_areas(self.grid, window), window.shape).ravel()
+        count = np.bincount(codes, weights=shares, minlength=len(names))
+        area = np.bincount(codes, weights=shares * areas[cells], minlength=len(names))
+        return {
+            name: np.array([count[at], area[at]]) for at, name in enumerate(names) if count[at] > 0
+        }
 
     def _coded(self, window: Window) -> tuple[Ints, Ints, Floats, tuple[str, ...]]:
         """Cells, position of the code in the names, share; and the names."""
         if self.polygons is not None:
             cover = cover_window(self.polygons, self.grid, window)
-            return *cover.entries(), self.polygons.names
+            entries = cover.entries()
+            _refuse_overlap(entries, self, window)
+            return *_settled(entries, window), self.polygons.names
         if self.source is None:  # pragma: no cover - one of the two is always there
             raise AssertionError
         cells, codes, shares = self._from_raster(self.source, window)
@@ -83,8 +92,9 @@ class Lithology:
         same = self.how == "same"
         rows, cols = axis_plans(source, self.grid, window, "nearest" if same else "mean")
         raw, valid = source.read(rows, cols)
+        _refuse_fractions(raw, valid, self.spec)
         if not same:
-            return class_shares(rows, cols, raw.astype(np.int64), valid)
+            return class_shares(rows, cols, np.where(valid, raw, 0).astype(np.int64), valid)
         if raw.shape != window.shape:
             at, taken = zip(same_cells(rows), same_cells(cols), strict=True)
             whole, held = np.zeros(window.shape, raw.dtype), np.zeros(window.shape, np.bool_)
@@ -99,6 +109,7 @@ class Lithology:
         if plan is None:
             return none, none.copy(), np.empty(0)
         raw, valid = source.read(plan.rows, plan.cols)
+        _refuse_fractions(raw, valid, self.spec)
         row, col = np.maximum(plan.row, 0), np.maximum(plan.col, 0)
         good = (plan.row >= 0) & valid[row, col]
         at_row, at_col = np.nonzero(good)
@@ -112,17 +123,55 @@ class Lithology:
         self, names: tuple[str, ...], codes: Ints, window: Window
     ) -> list[list[tuple[int, float]]]:
         known = [self.legend.mixtures.get(normal_code(name)) for name in names]
-        present = np.bincount(codes, minlength=len(names))
-        missing = [
-            f"{name} ({present[at]} cells)"
-            for at, name in enumerate(names)
-            if known[at] is None and present[at]
-        ]
-        if missing and self.spec.unknown == "error":
-            raise unknown_codes(missing, self.spec, self.legend, window)
+        if self.spec.unknown == "error":
+            found = np.unique(codes)
+            missing = {names[at] for at in found if known[at] is None}
+            if missing:
+                seen = {one: two for one, two in self.codes_in(window).items() if one in missing}
+                raise unknown_codes(seen, self.spec, self.legend, window)
         return [
             [(ROCK_NAMES.index(rock), share) for rock, share in mixture or ()] for mixture in known
         ]
+
+
+def _refuse_overlap(
+    entries: tuple[Ints, Ints, Floats], lithology: Lithology, window: Window
+) -> None:
+    cells, names, shares = entries
+    covered = np.bincount(cells, weights=shares, minlength=window.n_cells)
+    at = int(np.argmax(covered))
+    if covered[at] <= 1.0 + OVERLAP_TOLERANCE or lithology.polygons is None:
+        return
+    row, col = divmod(at, window.n_cols)
+    x = float(lithology.grid.x_centres(window.col + col, window.col + col + 1)[0])
+    y = float(lithology.grid.y_centres(window.row + row, window.row + row + 1)[0])
+    here = sorted({lithology.polygons.names[one] for one in names[cells == at]})
+    raise RegionError(
+        f"geology polygons overlap: they cover {covered[at]:.3f} of the cell at x {x:g}, y {y:g} "
+        f"({', '.join(here[:4])})",
+        where=lithology.spec.where,
+        fix="polygons that do not overlap; ground under two of them would count twice",
+    )
+
+
+def _settled(entries: tuple[Ints, Ints, Floats], window: Window) -> tuple[Ints, Ints, Floats]:
+    """Shares that add up to 1 where polygons meet but for slivers."""
+    cells, codes, shares = entries
+    covered = np.bincount(cells, weights=shares, minlength=window.n_cells)
+    whole = np.abs(covered - 1.0) <= OVERLAP_TOLERANCE
+    return cells, codes, shares / np.where(whole, covered, 1.0)[cells]
+
+
+def _refuse_fractions(raw: NDArray[Any], valid: NDArray[np.bool_], spec: LayerSpec) -> None:
+    if raw.dtype.kind != "f":
+        return
+    wrong = valid & ((raw != np.floor(raw)) | (np.abs(raw) > MOST_EXACT))
+    if wrong.any():
+        raise ValuesError(
+            f"{int(wrong.sum())} codes are not whole numbers, for example {raw[wrong][0]:g}",
+            where=spec.where,
+            fix="a raster of integer codes, never resampled by bilinear or mean",
+        )
 
 
 def _distinct(codes: Ints) -> tuple[Ints, Ints]:
@@ -138,14 +187,27 @@ def _distinct(codes: Ints) -> tuple[Ints, Ints]:
 
 
 def unknown_codes(
-    missing: list[str], spec: LayerSpec, legend: Legend, window: Window | None = None
+    missing: Mapping[str, Floats], spec: LayerSpec, legend: Legend, window: Window | None = None
 ) -> LegendError:
-    """The error for codes that the legend does not hold."""
+    """The error for codes that the legend does not hold, with their cells, area and a likely rock.
+
+    Parameters
+    ----------
+    missing : for each code, cells and area [m2].
+    """
     place = "" if window is None else f", rows {window.row}..{window.row_stop}"
+    ordered = sorted(missing, key=lambda code: -missing[code][1])
+    listed = [
+        f"{code} ({missing[code][0]:.0f} cells, {missing[code][1] / 1e6:.6g} km2)"
+        for code in ordered[:MOST_LISTED]
+    ]
+    more = f" and {len(ordered) - MOST_LISTED} more" if len(ordered) > MOST_LISTED else ""
+    near = suggest_rock(ordered[0])
     return LegendError(
-        f"the legend has no line for code {', '.join(missing)}",
+        f"the legend has no line for code {', '.join(listed)}{more}",
         where=f"{spec.where}{place}; legend {legend.path}",
-        fix='a line code,rock for each, or unknown = "nodata" under [layers.lithology]',
+        fix=f"a line {ordered[0]},{near or 'ROCK'} in the legend, and so on; or "
+        'unknown = "nodata" under [layers.lithology]',
     )
 
 
@@ -175,6 +237,9 @@ def _to_rocks(
 
 def _ordered(cell: Ints, rock: Ints, share: Floats) -> RockCells:
     if (cell[1:] > cell[:-1]).all():  # one rock a cell, in order already
+        keep = share > LEAST_SHARE
+        if not keep.all():
+            cell, rock, share = cell[keep], rock[keep], share[keep]
         return RockCells(cell, rock, share)
     key = cell * len(ROCK_NAMES) + rock
     order = np.argsort(key, kind="stable")

@@ -1,4 +1,4 @@
-"""CF NetCDF through xarray: raw values, and coordinates checked before they are believed."""
+"""CF NetCDF and Zarr by xarray: raw values; coordinates are checked before they are believed."""
 
 from __future__ import annotations
 
@@ -16,14 +16,24 @@ from pyproj.exceptions import CRSError
 from mapper.errors import FileFormatError, GridError, ValuesError
 from mapper.grid import parse_crs
 from mapper.job import LayerSpec
-from mapper.layers.axis import Axis, around_the_earth, axis_from_centres
-from mapper.layers.source import UNTAGGED_FILLS, Source, take
+from mapper.layers.axis import (
+    Axis,
+    around_the_earth,
+    axis_from_centres,
+    inside_the_poles,
+    one_turn,
+)
+from mapper.layers.source import UNTAGGED_FILLS, Source, stamp, take
+from mapper.layers.timeline import RawTime, Timeline, read_timeline
 
 _LON_LAT = "OGC:CRS84"
 
 
 @lru_cache(maxsize=32)
-def _opened(path: str) -> xr.Dataset:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.Dataset:
+    if Path(path).is_dir():
+        store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None)
+        return store
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
     return xr.open_dataset(
@@ -42,43 +52,74 @@ def open_netcdf(spec: LayerSpec) -> Source:
     FileFormatError, GridError, ValuesError.
     """
     try:
-        dataset = _opened(spec.path)
-    except (OSError, ValueError) as cause:
+        dataset = _opened(spec.path, stamp(spec.path))
+    except ImportError as cause:
         raise FileFormatError(
-            f"the file cannot be opened as NetCDF: {cause}", where=spec.where, fix="copy it again"
+            "Zarr needs the library zarr, which is not installed",
+            where=spec.where,
+            fix="pip install zarr, or a NetCDF file",
+        ) from cause
+    except (OSError, ValueError, KeyError) as cause:
+        raise FileFormatError(
+            f"the file cannot be opened as NetCDF or Zarr: {cause}",
+            where=spec.where,
+            fix="copy it again",
         ) from cause
     variable = _variable(dataset, spec)
+    if variable.dtype.kind not in "iuf":
+        raise FileFormatError(
+            f"variable {variable.name!r} holds {variable.dtype} values",
+            where=spec.where,
+            fix="a variable of real numbers",
+        )
     x_name, y_name = _horizontal(dataset, variable, spec)
-    _refuse_other_axes(variable, (x_name, y_name), spec)
+    time_name = _time_name(dataset, variable, (x_name, y_name), spec)
+    timeline = _timeline(dataset, time_name, spec)
+    if timeline is None and spec.years is not None:
+        raise ValuesError(
+            f"years = {list(spec.years)}, and variable {variable.name!r} has no time axis",
+            where=spec.where,
+            fix="remove years",
+        )
     crs = _crs(dataset, variable, x_name, spec)
     geographic = bool(parse_crs(crs).is_geographic)
     x = _axis(dataset, x_name, spec, southing=False, longitude=geographic)
     y = _axis(dataset, y_name, spec, southing=True, longitude=False)
-    x = around_the_earth(x) if geographic else x
-    y = _inside_the_poles(y, spec) if geographic else y
+    if geographic:
+        x = around_the_earth(one_turn(x, spec.registration, where=spec.where))
+        y = inside_the_poles(y, where=spec.where)
     attrs = variable.attrs
+    tagged = _nodata(variable, spec)
     return Source(
-        kind="netcdf",
+        kind="zarr" if Path(spec.path).is_dir() else "netcdf",
         path=spec.path,
         variable=str(variable.name),
         crs=crs,
         x=x,
         y=y,
         dtype=str(variable.dtype),
-        nodata=_nodata(variable, spec),
+        nodata=(*tagged, *UNTAGGED_FILLS) if variable.dtype.kind == "f" else tagged,
+        tagged_nodata=tagged,
         scale=float(attrs.get("scale_factor", 1.0)) if spec.scale is None else spec.scale,
         offset=float(attrs.get("add_offset", 0.0)) if spec.offset is None else spec.offset,
         unit=_text(attrs.get("units")),
         has_mask=False,
         block=_chunk(variable, (y_name, x_name), (y.size, x.size)),
         label=_text(attrs.get("long_name") or attrs.get("standard_name")) or "",
+        valid_range=_valid_range(variable, spec),
+        steps=timeline.steps if timeline else (),
+        notes=(timeline.note,) if timeline else (),
     )
 
 
 def _text(value: Any) -> str | None:
     if isinstance(value, bytes):
         return value.decode("latin-1")
-    return None if value is None else str(value)
+    text = None if value is None else str(value)
+    if text is not None and any("\udc80" <= letter <= "\udcff" for letter in text):
+        # bytes that are not UTF-8 arrive as lone surrogates
+        return text.encode("utf-8", "surrogateescape").decode("latin-1")
+    return text
 
 
 def _variable(dataset: xr.Dataset, spec: LayerSpec) -> xr.DataArray:
@@ -148,15 +189,50 @@ def _is_axis(dataset: xr.Dataset, dim: str, axis: str) -> bool:
     return dim.lower() in plain[axis]
 
 
-def _refuse_other_axes(variable: xr.DataArray, used: tuple[str, str], spec: LayerSpec) -> None:
+def _time_name(
+    dataset: xr.Dataset, variable: xr.DataArray, used: tuple[str, str], spec: LayerSpec
+) -> str | None:
+    """The dimension along which steps of time lie; other dimensions may hold one value only."""
     others = {str(dim): size for dim, size in variable.sizes.items() if dim not in used}
+    times = [dim for dim in others if _is_time(dataset, dim)]
     for dim, size in others.items():
-        if size != 1:
+        if size != 1 and times[:1] != [dim]:
             raise ValuesError(
                 f"variable {variable.name!r} has {size} values along {dim!r}, and one is needed",
                 where=spec.where,
                 fix=f"the mean or one step along {dim!r}, in a file of its own",
             )
+    return times[0] if times else None
+
+
+def _is_time(dataset: xr.Dataset, dim: str) -> bool:
+    if dim not in dataset.variables:
+        return False
+    attrs = dataset[dim].attrs
+    units = str(attrs.get("units", ""))
+    named = dim.lower() in ("time", "t", "month", "months")
+    return named or " since " in units or attrs.get("standard_name") == "time"
+
+
+def _timeline(dataset: xr.Dataset, name: str | None, spec: LayerSpec) -> Timeline | None:
+    if name is None or (dataset.sizes[name] == 1 and spec.years is None):
+        return None
+    coordinate = dataset[name]
+    attrs = coordinate.attrs
+    climatology = "climatology" in attrs
+    bounds_name = str(attrs.get("climatology" if climatology else "bounds", ""))
+    bounds = None
+    if bounds_name in dataset.variables:
+        bounds = np.asarray(dataset[bounds_name], dtype=np.float64)
+    raw = RawTime(
+        name=name,
+        values=np.asarray(coordinate, dtype=np.float64),
+        units=_text(attrs.get("units")) or "",
+        calendar=(_text(attrs.get("calendar")) or "standard").lower(),
+        bounds=bounds,
+        climatology=climatology,
+    )
+    return read_timeline(raw, spec.years, where=spec.where)
 
 
 def _crs(dataset: xr.Dataset, variable: xr.DataArray, x_name: str, spec: LayerSpec) -> str:
@@ -214,23 +290,37 @@ def _regularised(centres: NDArray[np.float64]) -> NDArray[np.float64]:
     return even if float(np.abs(even - centres).max()) <= tolerance else centres
 
 
-def _inside_the_poles(y: Axis, spec: LayerSpec) -> Axis:
-    over = float(np.abs(y.edges).max()) - 90.0
-    if over > 0.51 * y.step:
-        raise GridError(
-            f"cells reach {over:g} degrees beyond a pole", where=spec.where, fix="mend latitudes"
-        )
-    return Axis(y.centres, np.clip(y.edges, -90.0, 90.0), y.order, y.period)
-
-
 def _nodata(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, ...]:
     values = list(spec.nodata)
     for key in ("_FillValue", "missing_value"):
         if key in variable.attrs:
-            values.extend(float(one) for one in np.atleast_1d(variable.attrs[key]))
-    if variable.dtype.kind == "f":
-        values.extend(UNTAGGED_FILLS)
+            values.extend(_number(one, key, spec) for one in np.atleast_1d(variable.attrs[key]))
     return tuple(dict.fromkeys(values))
+
+
+def _number(value: Any, key: str, spec: LayerSpec) -> float:
+    try:
+        return float(_text(value) or "")
+    except ValueError as cause:
+        raise ValuesError(
+            f"{key} is {_text(value)!r}, and a number is needed",
+            where=spec.where,
+            fix="mend the attribute, e.g. with ncatted",
+        ) from cause
+
+
+def _valid_range(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, float]:
+    """The attributes valid_min, valid_max or valid_range, which CF states in packed values."""
+    attrs = variable.attrs
+    pair = np.atleast_1d(attrs.get("valid_range", ()))
+    if pair.size == 2:
+        return _number(pair[0], "valid_range", spec), _number(pair[1], "valid_range", spec)
+    low, high = -np.inf, np.inf
+    if "valid_min" in attrs:
+        low = _number(np.atleast_1d(attrs["valid_min"])[0], "valid_min", spec)
+    if "valid_max" in attrs:
+        high = _number(np.atleast_1d(attrs["valid_max"])[0], "valid_max", spec)
+    return low, high
 
 
 def _chunk(
@@ -243,13 +333,23 @@ def _chunk(
     return int(sizes[dims[0]]), int(sizes[dims[1]])
 
 
-def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
-    """Read raw values for one window in file order; NetCDF has no separate mask."""
-    variable = _opened(source.path)[source.variable]
-    x_name, y_name = _dims(_opened(source.path), variable)
-    flat = variable.isel({dim: 0 for dim in variable.dims if dim not in (x_name, y_name)})
+def read_window(
+    source: Source, window: tuple[slice, slice], at: slice | None
+) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+    """Read raw values for one window in file order, steps in front; there is no separate mask."""
+    rows, cols = window
+    dataset = _opened(source.path, stamp(source.path))
+    variable = dataset[source.variable]
+    x_name, y_name = _dims(dataset, variable)
+    others = [str(dim) for dim in variable.dims if dim not in (x_name, y_name)]
+    time_name = next((dim for dim in others if _is_time(dataset, dim)), None) if at else None
+    flat = variable.isel({dim: 0 for dim in others if dim != time_name})
+    if time_name is not None:
+        flat = flat.isel({time_name: at}).transpose(time_name, y_name, x_name)
+    else:
+        flat = flat.transpose(y_name, x_name)
     try:
-        raw = take(flat.transpose(y_name, x_name), rows, cols)
+        raw = take(flat, rows, cols)
     except (OSError, RuntimeError) as cause:
         raise FileFormatError(
             f"rows {rows.start}..{rows.stop} of {source.variable!r} cannot be read: {cause}",

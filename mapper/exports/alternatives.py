@@ -149,7 +149,7 @@ def spread_rows(laws: tuple[LawTotals, ...], names: tuple[str, ...]) -> list[lis
     return rows
 
 
-def describe_spread(laws: tuple[LawTotals, ...]) -> dict[str, Any] | None:
+def describe_alternatives(laws: tuple[LawTotals, ...]) -> dict[str, Any] | None:
     """Each law's totals and the spread between the laws, for the record."""
     if not laws:
         return None
