@@ -405,6 +405,7 @@ def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Pat
     if not laws:
         for path in paths:
             path.unlink(missing_ok=True)
+            path.with_suffix(".parquet").unlink(missing_ok=True)
         return
     write_csv(paths[0], LAW_COLUMNS, law_rows(laws, names))
     write_csv(paths[1], SPREAD_COLUMNS, spread_rows(laws, names))
