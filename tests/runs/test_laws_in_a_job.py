@@ -217,7 +217,7 @@ def test_the_record_and_the_summary_name_what_each_law_replaced(folder, capsys):
 def test_totals_of_laws_do_not_depend_on_the_blocks(folder, monkeypatch, shape):
     job = job_of(folder, f'default = "amiotte-suchet-1995"\n{SEVERAL}', MINE)
     run(job, out=folder / "whole")
-    monkeypatch.setattr(pipeline, "block_shape", lambda _: shape)
+    monkeypatch.setattr(pipeline, "block_shape", lambda *_: shape)
     run(job, out=folder / "parts")
     for name in ("laws.csv", "law_spread.csv", "flags.csv", "regions.csv"):
         whole, parts = (folder / one / "tables" / name for one in ("whole", "parts"))
@@ -256,7 +256,7 @@ def test_all_errors_of_the_laws_are_shown_before_a_pixel_is_read(folder, monkeyp
     def refuse(*_):
         raise AssertionError("a block was evaluated")
 
-    monkeypatch.setattr(pipeline, "evaluate_block", refuse)
+    monkeypatch.setattr(pipeline, "evaluate_block_states", refuse)
     own = MINE.replace("a * runoff", "a * runof + b").replace('"mmol L-1"', '"furlong"')
     job_of(folder, 'default = "mine"\nalternatives = ["west-2021"]', own)
     assert main(["run", str(folder / "job.toml"), "--out", str(folder / "out")]) == 2
