@@ -6,6 +6,7 @@ import csv
 import json
 import subprocess
 import sys
+from pathlib import Path
 
 import geopandas as gpd
 import numpy as np
@@ -18,6 +19,7 @@ from mapper import pipeline
 from mapper.cli import main
 from mapper.pipeline import run
 
+ROOT = Path(mapper.__file__).resolve().parents[1]
 CELL = 1000.0  # in an equal-area CRS: a cell is 1 km2
 N_ROWS, N_COLS = 6, 8
 TONNES = 44.0095  # t CO2 km-2 yr-1 for 1 mol m-2 yr-1
@@ -296,3 +298,11 @@ def test_a_reader_who_goes_away_ends_the_command_quietly():
         said = process.stderr.read()
         assert process.wait(60) == 0
     assert said == b""
+
+
+def test_the_worked_job_with_several_laws_is_sound(capsys):
+    assert main(["inspect", str(ROOT / "configs" / "several-laws.toml")]) == 0
+    shown = capsys.readouterr().out
+    for name in ("amiotte-suchet-1995", "maher-chamberlain-2014", "warm-rivers"):
+        assert f"alternative {name}, weight" in shown
+    assert "basalt: dessert-2003+supply-cap" in shown
