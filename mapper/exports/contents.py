@@ -10,6 +10,8 @@ from functools import cached_property
 from pathlib import Path
 from typing import Any
 
+import geopandas as gpd
+
 from mapper.engine import Plan
 from mapper.exports.files import safe_cell
 from mapper.exports.tables import Totals
@@ -19,6 +21,15 @@ OTHER_ROWS = ("outside", "all")
 
 SET_BY_JOB = "job"
 """The grade of a number that the job sets; the others are those of `mapper.laws.law.Grade`."""
+
+GRADE_WORDS: Mapping[str, str] = {
+    "read": "read in the source",
+    "quoted": "quoted from the source elsewhere",
+    "memory": "from memory, not seen",
+    "computed": "computed from the formula",
+    "project": "this project’s own choice",
+    SET_BY_JOB: "set by the job",
+}
 
 _SORTED_FIRST = ("drawdown", "consumption")
 
@@ -57,6 +68,7 @@ class Contents:
     plan: Plan
     found: Totals
     record: Mapping[str, Any]
+    hotspots: gpd.GeoDataFrame | None = None
 
     @property
     def title(self) -> str:

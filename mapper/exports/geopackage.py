@@ -87,15 +87,12 @@ def _multi(shapes: NDArray[Any]) -> tuple[NDArray[Any], str]:
 
 
 def _add_hotspots(path: Path, contents: Contents) -> None:
-    """Copy the layer of hot spots, where the run made one."""
-    import pyogrio.raw  # noqa: PLC0415
-
-    source = contents.folder / "tables" / "hotspots.geojson"
-    if not source.exists():
+    """Add the layer of hot spots, where the run looked for them."""
+    frame = contents.hotspots
+    if frame is None or not len(frame):
         return
-    meta, _, geometry, values = pyogrio.raw.read(source)
-    shapes, kind = _multi(shapely.from_wkb(geometry))
-    fields = dict(zip(meta["fields"], values, strict=True))
+    shapes, kind = _multi(np.asarray(frame.geometry, dtype=object))
+    fields = {name: frame[name].to_numpy() for name in frame.columns if name != "geometry"}
     _write_layer(path, "hotspots", shapes, kind, fields, contents)
 
 

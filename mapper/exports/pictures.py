@@ -149,8 +149,18 @@ def _scale_bar(axes: Any, display: Display) -> None:
     length = round_length(wide / 4)
     share = length / wide
     where = {"transform": axes.transAxes, "color": INK, "zorder": 5}
+    plate = {"facecolor": "white", "alpha": 0.75, "edgecolor": "none", "pad": 1.5}
     axes.plot([0.03, 0.03 + share], [0.045, 0.045], linewidth=2.2, solid_capstyle="butt", **where)
-    axes.text(0.03 + share / 2, 0.062, f"{length:g} km", ha="center", va="bottom", size=7, **where)
+    axes.text(
+        0.03 + share / 2,
+        0.062,
+        f"{length:g} km",
+        ha="center",
+        va="bottom",
+        size=7,
+        bbox=plate,
+        **where,
+    )
 
 
 def _write_texts(

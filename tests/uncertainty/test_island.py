@@ -95,7 +95,7 @@ def test_tables_have_the_same_bytes_for_any_block_shape_and_threads(tmp_path, mo
 
 
 def test_intervals_hold_the_central_total_and_widen_no_area(tmp_path):
-    import pandas as pd  # noqa: PLC0415
+    import pandas as pd
 
     job = load_job(ISLAND)
     run(replace(job, uncertainty=None, ranking=None), out=tmp_path / "plain")

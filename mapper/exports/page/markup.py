@@ -99,7 +99,7 @@ def bullets(items: Iterable[str]) -> str:
 
 def share_words(part: float, whole: float) -> str:
     """A share in a sentence."""
-    return percent(part, whole).replace("< ", "less than ")
+    return percent(part, whole).replace("<\u00a0", "less than ")
 
 
 def percent(part: float, whole: float) -> str:
@@ -108,7 +108,8 @@ def percent(part: float, whole: float) -> str:
         return "0 %"
     share = 100.0 * part / whole
     if share == 0:
-        return "0 %"
+        return "0\u00a0%"
     if 0 < share < 0.1:
-        return "< 0.1 %"
-    return f"{share:.1f} %" if share < 10 or 90 < share < 100 else f"{share:.0f} %"
+        return "<\u00a00.1\u00a0%"
+    words = f"{share:.1f}" if share < 10 or 90 < share < 100 else f"{share:.0f}"
+    return f"{words}\u00a0%"
