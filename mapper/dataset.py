@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import partial
 from typing import Any
 
 import dask.array as da
@@ -15,13 +16,14 @@ from mapper.accounting import drawdown_share, to_rate
 from mapper.engine import evaluate_rock
 from mapper.errors import LawError
 from mapper.grid import Grid, Window
+from mapper.hydrology import derive_runoff
 from mapper.job import Job
-from mapper.laws import LAWS, Law
+from mapper.laws import Law
 from mapper.layers.layer import QUANTITY, Layer
 from mapper.layers.lithology import Lithology
 from mapper.planning import block_shape, make_plan
 from mapper.rocks import ROCK_NAMES, ROCKS
-from mapper.scheme import RockLaw, Scheme
+from mapper.scheme import RockLaw, Scheme, find_laws, unknown_law
 from mapper.units import INNER_UNIT
 
 Floats = NDArray[np.float64]
@@ -60,12 +62,22 @@ def open_layers(job: Job, *, chunks: tuple[int, int] | None = None) -> xr.Datase
     }
     for name, layer in plan.layers.items():
         variables[name] = (("y", "x"), _lazy_values(layer, grid, shape))
+    derived = "runoff" not in variables and "runoff" in plan.scheme.input_names()
+    if derived:
+        climate = [variables[name][1] for name in ("precipitation", "temperature")]
+        runoff = da.map_blocks(
+            partial(derive_runoff, plan.water_method), *climate, dtype=np.float64
+        )
+        variables["runoff"] = (("y", "x"), runoff)
     dataset = xr.Dataset(variables, coords={"rock": list(rocks), **_coordinates(grid)})
     dataset["rock_share"].attrs = {"units": "1", "long_name": "share of the cell that a rock takes"}
     for name in plan.layers:
         dataset[name].attrs = {"units": INNER_UNIT[QUANTITY[name]], "long_name": name}
         if name in _STANDARD_NAMES:
             dataset[name].attrs["standard_name"] = _STANDARD_NAMES[name]
+    if derived:
+        long_name = f"runoff derived by {plan.water_method}"
+        dataset["runoff"].attrs = {"units": INNER_UNIT["water"], "long_name": long_name}
     dataset.attrs = {"title": job.title, "Conventions": "CF-1.11"}
     dataset.encoding["scheme"] = plan.scheme
     return _with_crs(dataset, grid)
@@ -138,9 +150,10 @@ def _scheme(dataset: xr.Dataset, law: str | Law | None) -> Scheme:
             )
         return scheme
     if isinstance(law, str):
-        if law not in LAWS:
-            raise LawError(f"there is no law {law!r}", where="mapper.drawdown", fix=", ".join(LAWS))
-        law = LAWS[law]
+        laws = find_laws()
+        if law not in laws:
+            raise unknown_law(law, laws, where="mapper.drawdown", fix='"{}"')
+        law = laws[law]
     weathering = [str(one) for one in dataset["rock"].to_index() if ROCKS[str(one)].weathers]
     try:
         return Scheme({rock: RockLaw(law, law.central_values(rock)) for rock in weathering})

@@ -13,11 +13,12 @@ from numpy.typing import NDArray
 from mapper.accounting import drawdown_share
 from mapper.grid import Grid, Window, cell_areas
 from mapper.hydrology import derive_runoff
+from mapper.laws import Capped
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
-from mapper.scheme import RockLaw, Scheme
+from mapper.scheme import Alternative, RockLaw, Scheme
 from mapper.states import AXES as STATE_AXES
 from mapper.states import StateCounts, StateLayout, count_states
 from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
@@ -45,15 +46,27 @@ class Flag(IntFlag):
 FLAG_MEANING: Mapping[Flag, str] = {
     Flag.NO_DATA: "no result: lithology or a layer that the law reads has no data",
     Flag.PARTLY_NO_DATA: "a part of the cell has no result",
-    Flag.RUNOFF_OUTSIDE: "runoff outside the range that the law was fitted in",
-    Flag.TEMPERATURE_OUTSIDE: "temperature outside the range that the law was fitted in",
-    Flag.OTHER_OUTSIDE: "another layer outside the range that the law was fitted in",
+    Flag.RUNOFF_OUTSIDE: "runoff outside the law's range",
+    Flag.TEMPERATURE_OUTSIDE: "temperature outside the law's range",
+    Flag.OTHER_OUTSIDE: "another layer outside the law's range",
     Flag.CAPPED: "held at the supply limit",
     Flag.NEGATIVE_RUNOFF: "runoff below zero, taken as zero",
     Flag.NOT_FINITE: "the law gave no finite number",
 }
 
 OUTSIDE_RANGE = Flag.RUNOFF_OUTSIDE | Flag.TEMPERATURE_OUTSIDE | Flag.OTHER_OUTSIDE
+
+COUNTED_FLAGS: tuple[Flag, ...] = (
+    Flag.RUNOFF_OUTSIDE,
+    Flag.TEMPERATURE_OUTSIDE,
+    Flag.OTHER_OUTSIDE,
+    OUTSIDE_RANGE,
+    Flag.CAPPED,
+    Flag.NEGATIVE_RUNOFF,
+    Flag.NOT_FINITE,
+)
+"""Causes whose area is added up; ground under two causes of one entry counts once in that entry.
+The area without data is what is left of the rock's area."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -79,7 +92,9 @@ class BlockSums(NamedTuple):
 
     ``area`` [m2] by region; ``total`` of all cells, not split: area [m2], consumption and
     drawdown [mol yr-1]. The others are by region and rock, shape (n_regions, n_rocks, LIMBS):
-    rock area, area with a result, consumption, and the area under each flag.
+    rock area, area with a result, consumption, and the area under each of `COUNTED_FLAGS`.
+    ``laws`` holds for each alternative law consumption, area with a result, and area outside its
+    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS).
     """
 
     area: Counts
@@ -88,6 +103,7 @@ class BlockSums(NamedTuple):
     valid_area: Counts
     consumption: Counts
     flagged: Counts
+    laws: Counts
 
     def plus(self, other: BlockSums) -> BlockSums:
         """Both sums together."""
@@ -128,7 +144,7 @@ def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResu
     read: list[Floats] = []
     known = np.ones(n, dtype=np.bool_)
     for one in law.law.inputs:
-        values = inputs[one.name]
+        values = np.asarray(inputs[one.name], dtype=np.float64)
         known &= ~np.isnan(values)
         if one.name == "runoff" and (values < 0).any():
             flags[values < 0] |= _bit(Flag.NEGATIVE_RUNOFF)
@@ -137,11 +153,22 @@ def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResu
         flags[outside] |= _bit(_outside_flag(one.name))
         read.append(values)
     with np.errstate(all="ignore"):  # what is not finite is flagged below, cell by cell
-        rate = np.broadcast_to(law.law.function(*read, **law.values), (n,))
+        rate, held = _rate(law, read)
+    rate = np.broadcast_to(rate, (n,))
+    if held is not None:
+        flags[held] |= _bit(Flag.CAPPED)
     bad = known & ~np.isfinite(rate)
     flags[bad] |= _bit(Flag.NOT_FINITE)
     flags[~known] = 0
     return RockResult(np.where(known & ~bad, rate, np.nan), flags)
+
+
+def _rate(law: RockLaw, layers: list[Floats]) -> tuple[Floats, NDArray[np.bool_] | None]:
+    """The law's rate, and where the supply limit held it, if the law has one."""
+    function = law.law.function
+    if isinstance(function, Capped):
+        return function.hold(*layers, **law.values)
+    return function(*layers, **law.values), None
 
 
 def _bit(flag: Flag) -> np.uint8:
@@ -156,7 +183,7 @@ def _outside_flag(name: str) -> Flag:
 
 def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
     """The layers that the laws read, on a window, each of shape (n_cells,)."""
-    needed = plan.scheme.input_names()
+    needed = plan.scheme.read_names()
     inputs = {
         name: plan.layers[name].values(window).ravel() for name in needed if name in plan.layers
     }
@@ -187,6 +214,11 @@ def evaluate_block_states(
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
     ground = _split_ground(rocks, regions, areas)
     sums = _sum_block(plan, result, ground, (regions, areas, maps))
+    laws = [
+        _sum_alternative(plan, _replace_entries(one, rocks, inputs, result), ground)
+        for one in plan.scheme.alternatives
+    ]
+    sums = sums._replace(laws=np.stack(laws)) if laws else sums
     if layout is None:
         return maps, sums, None
     return maps, sums, _count_block(plan, layout, result, ground, inputs)
@@ -235,6 +267,37 @@ def _count_block(
 def state_layout(plan: Plan) -> StateLayout:
     """Which layers the states of a plan are made of."""
     return StateLayout(plan.scheme.input_names(), N_ROCKS)
+
+
+def _replace_entries(
+    other: Alternative, rocks: RockCells, inputs: Mapping[str, Floats], result: RockResult
+) -> RockResult:
+    """The entries as the job's own laws gave them, and its own where the alternative serves."""
+    rate, flags = result.rate.copy(), result.flags.copy()
+    for rock, part in rock_parts(rocks):
+        law = other.replaced.get(rock)
+        if law is not None:
+            cells = rocks.cell[part]
+            taken = {name: inputs[name][cells] for name in law.law.input_names}
+            rate[part], flags[part] = evaluate_rock(law, taken)
+    return RockResult(rate, flags)
+
+
+def _sum_alternative(plan: Plan, result: RockResult, ground: _Ground) -> Counts:
+    """Add up consumption, area with a result and area outside the range, by region and rock."""
+    exponent = unit_exponent(plan.grid)
+    held = ground.area
+    rate, flags = result.rate[ground.entry], result.flags[ground.entry]
+    good = ~np.isnan(rate)
+    rows = (
+        np.where(good, rate, 0.0) * held,
+        np.where(good, held, 0.0),
+        np.where((flags & _bit(OUTSIDE_RANGE)) != 0, held, 0.0),
+    )
+    runs = runs_of(ground.key)
+    n_keys = plan.n_regions * N_ROCKS
+    shape = (plan.n_regions, N_ROCKS, LIMBS)
+    return np.stack([add_up(runs, row, n_keys, exponent).reshape(shape) for row in rows])
 
 
 def _evaluate_entries(
@@ -319,7 +382,7 @@ def _sum_block(
     if not good.all():
         valid_area = add_up(runs, np.where(good, held, 0.0), n_keys, exponent)
         rate = np.where(good, rate, 0.0)
-    flagged = [_flagged(key, held, flags, flag, n_keys, exponent) for flag in Flag]
+    flagged = [_flagged(key, held, flags, flag, n_keys, exponent) for flag in COUNTED_FLAGS]
     return BlockSums(
         area=area,
         total=_sum_cells(maps, areas, exponent),
@@ -327,6 +390,7 @@ def _sum_block(
         valid_area=valid_area.reshape(shape),
         consumption=add_up(runs, rate * held, n_keys, exponent).reshape(shape),
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
+        laws=np.zeros((0, 3, *shape), dtype=np.int64),
     )
 
 

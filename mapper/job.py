@@ -21,7 +21,7 @@ from mapper.doubts import (
     uncertainty_spec,
 )
 from mapper.errors import JobError, MissingFileError, Problems
-from mapper.laws import Spread
+from mapper.laws import CAP, Spread
 from mapper.rocks import ROCK_NAMES
 
 LAYER_NAMES = (
@@ -44,6 +44,7 @@ RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
 ALSO = ("netcdf", "geoparquet")
+CAPS = ("none", CAP)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -67,6 +68,8 @@ class LayerSpec:
     nodata: tuple[float, ...] = ()
     resampling: str = "auto"
     registration: str | None = None
+    paths: tuple[str, ...] = ()
+    years: tuple[int, int] | None = None
 
     @property
     def where(self) -> str:
@@ -98,6 +101,24 @@ class ParameterSpec:
 
 
 @dataclass(frozen=True, kw_only=True)
+class AlternativeSpec:
+    """One entry of ``[law] alternatives``: a law in place of the default, and its weight."""
+
+    name: str
+    weight: float = 1.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class OwnLawSpec:
+    """One ``[law.own.NAME]`` table, as written: its formula and units are checked later."""
+
+    formula: str
+    inputs: Mapping[str, Any]
+    parameters: Mapping[str, Any]
+    rocks: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, kw_only=True)
 class LawSpec:
     """The ``[law]`` table."""
 
@@ -106,6 +127,10 @@ class LawSpec:
     base: str = "amiotte-suchet-1995"
     responses: Mapping[str, str] = field(default_factory=dict)
     parameters: Mapping[str, ParameterSpec] = field(default_factory=dict)
+    cap: str = "none"
+    own: Mapping[str, OwnLawSpec] = field(default_factory=dict)
+    alternatives: tuple[AlternativeSpec, ...] = ()
+    weight: float = 1.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -147,6 +172,25 @@ def load_job(path: str | Path) -> Job:
     ------
     MissingFileError, JobError, or ManyProblemsError with every problem that the file itself has.
     """
+    job, problems = read_job(path)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
+
+
+def read_job(path: str | Path) -> tuple[Job | None, Problems]:
+    """Read a job file with its problems, so that more can be gathered before they are raised.
+
+    Returns
+    -------
+    The job, wrong values replaced by defaults, or None where so much is missing that nothing
+    more can be looked at; and the problems.
+
+    Raises
+    ------
+    MissingFileError, JobError where the file cannot be read at all.
+    """
     path = Path(path).absolute()
     table = _read_toml(path)
     problems = Problems()
@@ -166,8 +210,11 @@ def load_job(path: str | Path) -> Job:
     )
     root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
-    problems.raise_if_any()
-    return job
+    paths = [one.path for one in job.layers.values()]
+    paths += [job.regions.path, job.regions.id] if job.regions is not None else []
+    lithology = job.layers.get("lithology")
+    enough = all(paths) and lithology is not None and bool(lithology.legend)
+    return (job if enough else None), problems
 
 
 def _read_toml(path: Path) -> dict[str, Any]:
@@ -310,6 +357,25 @@ class _Table:
             return None
         return tuple(float(one) for one in listed)
 
+    def listed(self, key: str, example: str) -> list[Any]:
+        value = self._take(key)
+        if value is not None and not isinstance(value, list):
+            self.wrong(key, "a list", f"{key} = {example}")
+        return value if isinstance(value, list) else []
+
+    def raw(self, key: str, example: str) -> dict[str, Any]:
+        """Take a table whose keys somebody else checks."""
+        value = self._take(key)
+        if value is not None and not isinstance(value, dict):
+            self.wrong(key, "a table", f"{key} = {example}")
+        return value if isinstance(value, dict) else {}
+
+    def weight(self, key: str) -> float:
+        value = self.number(key)
+        if value is not None and value <= 0:
+            self.wrong(key, "a weight above zero", f"{key} = 1.0")
+        return 1.0 if value is None else value
+
     def finish(self) -> None:
         """Note every key that was not asked for, with the nearest one that is known."""
         for key in self.values:
@@ -345,9 +411,12 @@ def _grid_spec(table: _Table) -> GridSpec:
     crs = table.optional_text("crs")
     resolution = table.numbers("resolution", None, "0.1")
     bounds = table.numbers("bounds", 4, "[left, bottom, right, top]")
-    if resolution is not None and (len(resolution) > 2 or min(resolution) <= 0):
+    if resolution is not None and not _is_resolution(resolution):
         table.wrong("resolution", "one or two positive numbers", "resolution = 0.1")
         resolution = None
+    if bounds is not None and not all(math.isfinite(one) for one in bounds):
+        table.wrong("bounds", "four finite numbers", "bounds = [-10, 40, 5, 50]")
+        bounds = None
     if bounds is not None and not (bounds[0] < bounds[2] and bounds[1] < bounds[3]):
         table.wrong("bounds", "left < right and bottom < top", "bounds = [-10, 40, 5, 50]")
         bounds = None
@@ -357,6 +426,11 @@ def _grid_spec(table: _Table) -> GridSpec:
         resolution=None if resolution is None else (resolution[0], resolution[-1]),
         bounds=None if bounds is None else (bounds[0], bounds[1], bounds[2], bounds[3]),
     )
+
+
+def _is_resolution(numbers: tuple[float, ...]) -> bool:
+    good = all(math.isfinite(one) and one > 0 for one in numbers)
+    return good and len(numbers) in (1, 2)
 
 
 def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
@@ -377,10 +451,11 @@ def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
 
 def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
     lithology = name == "lithology"
-    path = _absolute(table.needed_text("path", '"file.tif"'), folder, table)
+    paths = _paths(table, folder)
     common: dict[str, Any] = {
         "name": name,
-        "path": path,
+        "path": paths[0],
+        "paths": paths,
         "variable": table.optional_text("variable"),
         "sheet": table.optional_text("layer"),
         "crs": table.optional_text("crs"),
@@ -407,10 +482,40 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
         **common,
         **vegetation,
         units=table.optional_text("units"),
+        years=_years(table),
         scale=table.number("scale"),
         offset=table.number("offset"),
         resampling=table.choice("resampling", RESAMPLING, default="auto"),
     )
+
+
+def _paths(table: _Table, folder: Path) -> tuple[str, ...]:
+    """One path, several in a list, or a pattern with ``*`` for files side by side."""
+    value = table.values.get("path")
+    if not isinstance(value, list):
+        text = table.needed_text("path", '"file.tif"')
+        path = _absolute(text, folder, table)
+        if "*" not in text:
+            return (path,)
+        found = sorted(str(one) for one in Path(path).parent.glob(Path(path).name))
+        if not found:
+            table.wrong("path", "a pattern that some file matches", 'path = "tiles/*.tif"')
+        return tuple(found) or ("",)
+    table.known.append("path")
+    if not value or not all(isinstance(one, str) and one.strip() for one in value):
+        table.wrong("path", "a list of file names", 'path = ["west.tif", "east.tif"]')
+        return ("",)
+    return tuple(_absolute(one, folder, table) for one in value)
+
+
+def _years(table: _Table) -> tuple[int, int] | None:
+    pair = table.numbers("years", 2, "[1991, 2020]")
+    if pair is None:
+        return None
+    if any(one != int(one) for one in pair) or pair[0] > pair[1]:
+        table.wrong("years", "a first and a last year", "years = [1991, 2020]")
+        return None
+    return int(pair[0]), int(pair[1])
 
 
 def _registration(table: _Table) -> str | None:
@@ -432,7 +537,48 @@ def _law_spec(table: _Table) -> LawSpec:
         by_rock={key: by_rock.text(key, default="") for key in list(by_rock.values)},
         responses={key: value for key, value in chosen.items() if value},
         parameters={key: _parameter_spec(key, parameters) for key in list(parameters.values)},
+        cap=table.choice("cap", CAPS, default="none"),
+        own=_own_laws(table.table("own")),
+        alternatives=_alternatives(table),
+        weight=table.weight("weight"),
     )
+
+
+def _own_laws(parent: _Table) -> dict[str, OwnLawSpec]:
+    tables = {name: parent.table(name) for name in parent.values}
+    return {
+        name: OwnLawSpec(
+            formula=table.needed_text("formula", '"a * runoff"'),
+            inputs=table.raw("inputs", '{ runoff = "mm yr-1" }'),
+            parameters=table.raw("parameters", '{ a = { value = 0.5, unit = "mmol L-1" } }'),
+            rocks=_rock_list(table),
+        )
+        for name, table in tables.items()
+    }
+
+
+def _rock_list(table: _Table) -> tuple[str, ...]:
+    example = '["basalt", "gabbro"]'
+    listed = table.listed("rocks", example)
+    if not all(isinstance(one, str) for one in listed):
+        table.wrong("rocks", "names of rocks", f"rocks = {example}")
+    return tuple(one for one in listed if isinstance(one, str))
+
+
+def _alternatives(table: _Table) -> tuple[AlternativeSpec, ...]:
+    example = '["west-2012", { name = "dessert-2003", weight = 2.0 }]'
+    chosen: list[AlternativeSpec] = []
+    for place, one in enumerate(table.listed("alternatives", example), start=1):
+        if not isinstance(one, str | dict):
+            table.wrong("alternatives", "names of laws", f"alternatives = {example}")
+            continue
+        values = {"name": one} if isinstance(one, str) else one
+        where = f"{table.where}.alternatives, entry {place}"
+        entry = _Table(values, where=where, problems=table.problems)
+        table.children.append(entry)
+        name = entry.needed_text("name", '"west-2012"')
+        chosen.append(AlternativeSpec(name=name, weight=entry.weight("weight")))
+    return tuple(chosen)
 
 
 def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:

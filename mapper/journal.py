@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from mapper.errors import RunFolderError
 
 WORK = ".work"
+MOST_NAMED = 12  # of the things that changed, in a message
 
 
 @dataclass(frozen=True)
@@ -99,7 +100,8 @@ def _refuse_changes(old: Mapping[str, Any], new: Mapping[str, Any], folder: Path
     if changed:
         raise RunFolderError(
             "the folder holds an unfinished run of another job; changed since: "
-            + ", ".join(changed),
+            + ", ".join(changed[:MOST_NAMED])
+            + (f" and {len(changed) - MOST_NAMED} more" if len(changed) > MOST_NAMED else ""),
             where=str(folder),
             fix="--fresh to start over, or --out DIR for another folder",
         )

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 import json
 import os
 import resource
@@ -22,6 +21,15 @@ from mapper.accounting import to_rate
 from mapper.cluster import connected, finished
 from mapper.engine import BlockSums, Plan, evaluate_block_states
 from mapper.errors import RunFolderError
+from mapper.exports.alternatives import (
+    LAW_COLUMNS,
+    SPREAD_COLUMNS,
+    LawTotals,
+    describe_alternatives,
+    law_rows,
+    spread_rows,
+    to_law_totals,
+)
 from mapper.exports.contents import Contents
 from mapper.exports.doubts import (
     describe_spread,
@@ -42,10 +50,12 @@ from mapper.exports.record import (
     versions,
 )
 from mapper.exports.tables import (
+    FLAG_COLUMNS,
     REGION_COLUMNS,
     ROCK_COLUMNS,
     Totals,
     closure,
+    flag_rows,
     region_rows,
     rock_rows,
     to_totals,
@@ -69,8 +79,8 @@ from mapper.planning import (
 from mapper.ranking import CLEARLY_AHEAD, Ranking
 from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
-from mapper.uncertainty.propagate import Work
-from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
+from mapper.uncertainty.propagate import Apply, Work
+from mapper.uncertainty.spread import SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
@@ -104,6 +114,7 @@ class RunResult:
     resumed_blocks: int
     spread: SpreadFound | None = None
     ranking: Ranking | None = None
+    laws: tuple[LawTotals, ...] = ()
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -147,12 +158,19 @@ def run(
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
         _write_maps(plan, windows, journal, folder, (engine.threads, progress))
-        spread = None if draws is None else _run_draws(draws, plan, journal, found, engine.threads)
+        spread = None
+        if draws is not None:
+            counts = _merge_blocks(journal, len(windows))
+            spread = find_spread(
+                draws, plan, counts, found.consumption, _in_threads(engine.threads)
+            )
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
+        laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, spread, ranking, folder)
+        _write_laws(laws, found.names, folder)
         spots = _write_hotspots(job, folder)
         seconds = time.monotonic() - began
-        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
+        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking, laws)
         contents = Contents(folder, plan, found, _record(job, plan, result), spots)
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
@@ -208,31 +226,46 @@ def _lives(process: int) -> bool:
 
 
 def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
-    """What must be the same for finished blocks to be used again."""
-    described = json.dumps(describe_job(job), sort_keys=True, default=str)
+    """What must be the same for finished blocks to be used again, key by key of the job."""
+    described = {key: one for key, one in describe_job(job).items() if key not in _NO_NUMBERS}
     files = {
-        f"input {Path(path).name}": [Path(path).stat().st_size, Path(path).stat().st_mtime_ns]
-        for path in input_files(job)
-    }
+        f"the file {Path(path).name} ({at})": [
+            Path(path).stat().st_size, Path(path).stat().st_mtime_ns
+        ]
+        for at, path in enumerate(input_files(job), start=1)
+    }  # fmt: skip
     return {
-        "job": hashlib.sha256(described.encode()).hexdigest(),
-        "versions": versions(),
+        **_flat(described),
+        **{f"version of {name}": one for name, one in versions().items()},
         "blocks": [len(windows), *windows[0].shape],
         **files,
     }
 
 
-def _run_draws(
-    draws: Draws, plan: Plan, journal: Journal, found: Totals, threads: int
-) -> SpreadFound:
-    """Merge the states of the blocks and evaluate every draw on them."""
+_NO_NUMBERS = ("title", "path", "folder")
+"""Keys of a job that change no number."""
+
+
+def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
+    """Nested keys as one dotted key each."""
+    found: dict[str, str] = {}
+    for key, value in described.items():
+        name = f"{before}{key}"
+        if isinstance(value, Mapping) and value:
+            found |= _flat(value, f"{name}.")
+        else:
+            found[name] = json.dumps(value, default=str)
+    return found
+
+
+def _in_threads(threads: int) -> Apply:
+    """Does pieces of work in dask's threads."""
 
     def apply(work: list[Work]) -> list[NDArray[np.float64]]:
         tasks = [dask.delayed(one, pure=False)() for one in work]
         return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
 
-    counts = _merge_blocks(journal, len(blocks(plan.grid, block_shape(plan))))
-    return find_spread(draws, plan, counts, found.consumption, apply)
+    return apply
 
 
 STATES_HELD = 2_000_000
@@ -366,6 +399,17 @@ def _write_one_map(
     return write_map(folder / "maps", kind, grid, pieces, threads=2)
 
 
+def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Path) -> None:
+    """Write the tables of a job with several laws; those of an earlier run are taken away."""
+    paths = [folder / "tables" / name for name in ("laws.csv", "law_spread.csv")]
+    if not laws:
+        for path in paths:
+            path.unlink(missing_ok=True)
+        return
+    write_csv(paths[0], LAW_COLUMNS, law_rows(laws, names))
+    write_csv(paths[1], SPREAD_COLUMNS, spread_rows(laws, names))
+
+
 def _write_tables(
     found: Totals, spread: SpreadFound | None, ranking: Ranking | None, folder: Path
 ) -> None:
@@ -374,6 +418,7 @@ def _write_tables(
     tables = folder / "tables"
     write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
     write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
+    write_csv(tables / "flags.csv", FLAG_COLUMNS, flag_rows(found))
     if spread is not None:
         write_sensitivity(tables / "sensitivity.csv", spread)
     if ranking is not None:
@@ -390,6 +435,7 @@ def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
             "drawdown_t_per_yr": float(found.drawdown.sum()),
             "valid_area_km2": float(found.valid_area.sum()),
             "area_under_flag_km2": found.flagged,
+            "between_laws": describe_alternatives(result.laws),
         },
         "checks": dict(result.checks),
         **_describe_doubts(job, result),
@@ -474,6 +520,12 @@ class Inspection:
             for rock, one in self.plan.scheme.by_rock.items()
         ]
         lines += [f"note        {note}" for note in self.plan.notes]
+        lines += [
+            f"alternative {one.name}, weight {one.weight:g}: in place of "
+            f"{self.plan.scheme.name} on {', '.join(one.replaced)}"
+            + (f"; not on {', '.join(one.kept)}" if one.kept else "")
+            for one in self.plan.scheme.alternatives
+        ]
         lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
         return lines
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +14,7 @@ from mapper.coverage import polygons_on
 from mapper.engine import Plan
 from mapper.errors import GridError, JobError, MapperError, Problems
 from mapper.grid import Grid, Window, blocks, parse_crs, same_crs
-from mapper.job import GridSpec, Job, LayerSpec
+from mapper.job import GridSpec, Job, LayerSpec, read_job
 from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
 from mapper.layers.lithology import Lithology, unknown_codes
 from mapper.layers.oddities import odd_values
@@ -41,6 +42,23 @@ class Sample:
     median: float
     high: float
     coverage: float
+
+
+def open_job(path: str | Path) -> Job:
+    """Read a job file; where it has problems, look for those of the files that it names too.
+
+    Raises
+    ------
+    MapperError, or ManyProblemsError with every problem that can be found before the run.
+    """
+    job, problems = read_job(path)
+    if job is not None and problems.found:
+        with problems.gather():
+            make_plan(job)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
 
 
 def make_plan(job: Job) -> Plan:
@@ -80,10 +98,13 @@ def make_plan(job: Job) -> Plan:
     notes: list[str] = []
     if lithology is not None:
         notes += _check_codes(lithology, problems)
+        if lithology.source is not None:
+            notes += [f"lithology: {note}" for note in lithology.source.notes]
     for layer in layers.values():
         with problems.gather():
             sample_layer(layer)
-            notes += [f"{layer.name}: {note}" for note in odd_values(layer)]
+            found = (*layer.source.notes, *odd_values(layer))
+            notes += [f"{layer.name}: {note}" for note in found]
     problems.raise_if_any()
     if lithology is None or scheme is None:  # pragma: no cover - then a problem was raised
         raise AssertionError
@@ -114,10 +135,10 @@ def _polygons_or_wrong(spec: LayerSpec) -> bool:
 
 def _check_layers(job: Job, scheme: Scheme) -> None:
     problems = Problems()
-    for name in scheme.input_names():
+    for name in scheme.read_names():
         if name in job.layers:
             continue
-        laws = ", ".join(law.name for law in scheme.laws() if name in law.input_names)
+        laws = ", ".join(law.name for law in scheme.every_law() if name in law.input_names)
         if name == "runoff":
             if "precipitation" in job.layers and "temperature" in job.layers:
                 continue
@@ -136,8 +157,8 @@ def _check_layers(job: Job, scheme: Scheme) -> None:
 
 def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
     spec = job.grid
-    if spec.resolution is not None:
-        return _spelled_grid(spec, job)
+    if spec.resolution is not None or spec.crs is not None:
+        return _once_round(_spelled_grid(spec, job), job)
     if not sources and spec.take_from is None:
         raise JobError(
             "no layer is a grid, so the job's grid must be spelled out",
@@ -157,10 +178,25 @@ def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
             where=f"{job.path}, grid",
             fix="[grid] from = another layer, or crs, resolution and bounds",
         )
-    return _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+    grid = _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+    return _once_round(grid, job)
+
+
+def _once_round(grid: Grid, job: Job) -> Grid:
+    """The grid itself; refuses one that goes round the earth more than once."""
+    width = grid.dx * grid.n_cols
+    if grid.is_geographic and width > 360.0 * (1 + 1e-9):
+        raise GridError(
+            f"the grid spans {width:g} degrees of longitude: ground would count twice",
+            where=f"{job.path}, grid",
+            fix="[grid] bounds of at most 360 degrees",
+        )
+    return grid
 
 
 def _finest(sources: Mapping[str, Source]) -> str:
+    if not sources:
+        return "lithology"
     geographic = {name: bool(parse_crs(one.crs).is_geographic) for name, one in sources.items()}
     return min(
         sources, key=lambda name: sources[name].x.step * (1 if not geographic[name] else 1e5)
@@ -176,7 +212,15 @@ def _spelled_grid(spec: GridSpec, job: Job) -> Grid:
         )
     left, bottom, right, top = spec.bounds
     dx, dy = spec.resolution
-    n_cols, n_rows = max(1, round((right - left) / dx)), max(1, round((top - bottom) / dy))
+    n_cols, n_rows = round((right - left) / dx), round((top - bottom) / dy)
+    off = max(abs((right - left) / dx - n_cols), abs((top - bottom) / dy - n_rows))
+    if off > 1e-6 * max(n_cols, n_rows, 1) or not n_cols or not n_rows:
+        raise GridError(
+            f"bounds {list(spec.bounds)} do not hold a whole number of cells of {dx:g} x {dy:g}",
+            where=f"{job.path}, grid.bounds",
+            fix=f"bounds = [{left:g}, {top - dy * max(n_rows, 1):g}, "
+            f"{left + dx * max(n_cols, 1):g}, {top:g}]",
+        )
     return Grid(parse_crs(spec.crs).to_wkt(), left, top, dx, dy, n_rows, n_cols)
 
 

@@ -30,17 +30,30 @@ _CHUNK = 2**22
 
 
 def file_hash(path: str) -> str:
-    """SHA-256 of a file's bytes."""
+    """SHA-256 of a file's bytes, or of all files of a folder."""
     digest = hashlib.sha256()
-    with Path(path).open("rb") as stream:
-        while chunk := stream.read(_CHUNK):
-            digest.update(chunk)
+    for file in _files_of(path):
+        if file != Path(path):  # a store of many files: their names count too
+            digest.update(str(file.relative_to(path)).encode())
+        with file.open("rb") as stream:
+            while chunk := stream.read(_CHUNK):
+                digest.update(chunk)
     return digest.hexdigest()
+
+
+def _files_of(path: str) -> list[Path]:
+    root = Path(path)
+    return sorted(one for one in root.rglob("*") if one.is_file()) if root.is_dir() else [root]
 
 
 def input_files(job: Job) -> list[str]:
     """Every file that a job reads, once, in the order of the job."""
-    paths = [path for spec in job.layers.values() for path in (spec.path, spec.legend) if path]
+    paths = [
+        path
+        for spec in job.layers.values()
+        for path in (*(spec.paths or (spec.path,)), spec.legend)
+        if path
+    ]
     if job.regions is not None:
         paths.append(job.regions.path)
     return list(dict.fromkeys(paths))
@@ -49,7 +62,11 @@ def input_files(job: Job) -> list[str]:
 def describe_inputs(job: Job) -> list[dict[str, Any]]:
     """Name, size and hash of every input."""
     return [
-        {"name": Path(path).name, "bytes": Path(path).stat().st_size, "sha256": file_hash(path)}
+        {
+            "name": Path(path).name,
+            "bytes": sum(one.stat().st_size for one in _files_of(path)),
+            "sha256": file_hash(path),
+        }
         for path in input_files(job)
     ]
 
@@ -62,6 +79,7 @@ def describe_job(job: Job) -> dict[str, Any]:
     for spec in described["layers"].values():
         for key in ("path", "legend"):
             spec[key] = Path(spec[key]).name if spec[key] else None
+        spec["paths"] = [Path(one).name for one in spec["paths"]]
     if described["regions"]:
         described["regions"]["path"] = Path(described["regions"]["path"]).name
     return described
@@ -85,7 +103,18 @@ def describe_plan(plan: Plan) -> dict[str, Any]:
         },
         "notes": list(plan.notes),
         "water_method": plan.water_method if "runoff" not in plan.layers else "runoff given",
-        "laws": {rock: _describe_law(one) for rock, one in plan.scheme.by_rock.items()},
+        "laws": {rock: _describe_law(one, rock) for rock, one in plan.scheme.by_rock.items()},
+        "alternatives": [
+            {
+                "law": other.name,
+                "weight": other.weight,
+                "rocks_left_to_the_default": list(other.kept),
+                "in_place_of_the_default": {
+                    rock: _describe_law(one, rock) for rock, one in other.replaced.items()
+                },
+            }
+            for other in plan.scheme.alternatives
+        ],
         "regions": None
         if plan.regions is None
         else {"count": len(plan.regions.names), "notes": list(plan.regions.notes)},
@@ -105,15 +134,18 @@ def _describe_layer(layer: Layer) -> dict[str, Any]:
     }
 
 
-def _describe_law(one: RockLaw) -> dict[str, Any]:
+def _describe_law(one: RockLaw, rock: str) -> dict[str, Any]:
+    """A rock's law; "modified" says that it is not as published, "changed" what is not."""
     return {
         "law": one.law.name,
+        "formula": one.law.formula,
         "reference": one.law.reference,
         "modified": bool(one.changed),
         "changed": list(one.changed),
         "parameters": {
             parameter.name: {
                 "value": one.values[parameter.name],
+                "published": parameter.value(rock),
                 "unit": parameter.unit,
                 "source": parameter.source,
                 "grade": parameter.grade,

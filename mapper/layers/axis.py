@@ -256,6 +256,13 @@ def plan_axis(
     return AxisPlan(first, last, weights, nearest.astype(np.int64), file_index)
 
 
+def whole_axis(axis: Axis, start: int = 0, stop: int | None = None) -> AxisPlan:
+    """A plan that reads an axis as it is, all of it or a stretch."""
+    order = axis.order[start:stop]
+    empty = sparse.csr_matrix((0, order.size), dtype=np.float64)
+    return AxisPlan(start, start + order.size, empty, np.empty(0, dtype=np.int64), order)
+
+
 def _extended(axis: Axis) -> tuple[Floats, Floats]:
     if not axis.period:
         return axis.centres, axis.edges

@@ -22,7 +22,7 @@ from mapper.grid import parse_crs
 from mapper.job import LayerSpec
 from mapper.layers.axis import around_the_earth, inside_the_poles, one_turn
 from mapper.layers.damage import blocks_in, refuse_cut_file, rows_per_strip
-from mapper.layers.source import Source, north_up_axes, take
+from mapper.layers.source import Source, north_up_axes, stamp, take
 
 MOST_CELLS = 2**37
 """A global grid of 3 arc-seconds has 2**36.4 cells."""
@@ -42,8 +42,7 @@ def open_geotiff(spec: LayerSpec) -> Source:
     """
     try:
         with warnings.catch_warnings():
-            # what is not georeferenced is refused below, in our own words
-            warnings.simplefilter("ignore", NotGeoreferencedWarning)
+            warnings.simplefilter("ignore", NotGeoreferencedWarning)  # refused below, in words
             with rasterio.open(spec.path, driver="GTiff") as dataset:
                 return _describe(dataset, spec)
     except RasterioIOError as cause:
@@ -199,7 +198,7 @@ def _sidecars(spec: LayerSpec) -> tuple[str, ...]:
 
 
 @lru_cache(maxsize=32)
-def _opened(path: str) -> xr.DataArray:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.DataArray:
     opened = rioxarray.open_rasterio(
         path, driver="GTiff", lock=False, masked=False, parse_coordinates=False, cache=False
     )
@@ -209,11 +208,16 @@ def _opened(path: str) -> xr.DataArray:
     return opened
 
 
-def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+def read_window(
+    source: Source,
+    window: tuple[slice, slice],
+    at: slice | None,  # noqa: ARG001 - a GeoTIFF has no time axis
+) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values and the file's own mask for one window in file order."""
+    rows, cols = window
     band = int(source.variable or 1)
     try:
-        raw = take(_opened(source.path)[band - 1], rows, cols)
+        raw = take(_opened(source.path, stamp(source.path))[band - 1], rows, cols)
         if not source.has_mask:
             return raw, np.ones(raw.shape, dtype=np.bool_)
         return raw, take(_Mask(source.path, band), rows, cols) != 0
@@ -254,10 +258,11 @@ class _Mask:
         self.path = path
         self.band = band
 
-    def __getitem__(self, window: tuple[slice, slice]) -> NDArray[np.uint8]:
-        rows, cols = window
-        handles: dict[str, Any] = _local.__dict__.setdefault("handles", {})
-        if self.path not in handles:
-            handles[self.path] = rasterio.open(self.path, driver="GTiff")
+    def __getitem__(self, window: tuple[Any, slice, slice]) -> NDArray[np.uint8]:
+        _, rows, cols = window
+        handles: dict[tuple[str, tuple[int, int]], Any] = _local.__dict__.setdefault("handles", {})
+        key = (self.path, stamp(self.path))
+        if key not in handles:
+            handles[key] = rasterio.open(self.path, driver="GTiff")
         bounds = ((rows.start, rows.stop), (cols.start, cols.stop))
-        return np.asarray(handles[self.path].read_masks(self.band, window=bounds))
+        return np.asarray(handles[key].read_masks(self.band, window=bounds))

@@ -13,10 +13,12 @@ from mapper.errors import GridError, ValuesError
 from mapper.grid import Grid, Window, parse_crs, same_crs, transformer
 from mapper.job import LayerSpec
 from mapper.layers.axis import SAME_TOLERANCE, Axis, AxisPlan, Method, nearest_turn, plan_axis
+from mapper.layers.decoding import read_decoded
 from mapper.layers.resample import resample
 from mapper.layers.source import Source, file_kind
+from mapper.layers.timeline import Step
 from mapper.layers.warp import plan_points, sample_bilinear, sample_nearest, subdivisions
-from mapper.units import INNER_UNIT, Conversion, Quantity, conversion
+from mapper.units import INNER_UNIT, MONTHS_PER_YEAR, Conversion, Quantity, conversion
 from mapper.vegetation import cover_from_ndvi
 
 Floats = NDArray[np.float64]
@@ -68,18 +70,21 @@ class Layer:
         """The layer's name in the job."""
         return self.spec.name
 
-    def values(self, window: Window) -> Floats:
+    def values(self, window: Window, month: int | None = None) -> Floats:
         """Values of a window in inner units, NaN where there is no data.
+
+        Parameters
+        ----------
+        month : 1..12 for the mean of that month, None for the mean of whole years.
 
         Raises
         ------
         ValuesError where values cannot be what the layer says they are.
         """
         if self.how == "points":
-            return self._sampled(window)
+            return self._sampled(window, month)
         rows, cols = axis_plans(self.source, self.grid, window, _method(self.how))
-        raw, valid = self.source.read(rows, cols)
-        values = self.decode(raw, valid)
+        values, valid = read_decoded(self, rows, cols, month)
         if self.how == "same":
             inside, taken = same_cells(rows), same_cells(cols)
             if values.shape == window.shape:
@@ -92,26 +97,42 @@ class Layer:
 
     def decode(self, raw: NDArray[Any], valid: NDArray[np.bool_]) -> Floats:
         """Raw values in inner units; what is not valid is left as it falls."""
+        values = self._converted(raw, valid, 1.0)
+        self.check(values, valid)
+        return values
+
+    def decode_step(self, raw: NDArray[Any], valid: NDArray[np.bool_], step: Step) -> Floats:
+        """Raw values of one step of time; a sum over a month counts by that month's length."""
+        factor = 1.0
+        if self.conversion.per_month and step.month:
+            factor = step.year_days / (MONTHS_PER_YEAR * step.days)
+        values = self._converted(raw, valid, factor)
+        if self.name in ("temperature", "vegetation", "soil_shielding"):
+            self.check(values, valid)  # of water a single month or day may be far from the mean
+        return values
+
+    def check(self, values: Floats, valid: NDArray[np.bool_]) -> None:
+        """Refuse values that the layer cannot have."""
+        _check_plausible(self, values, valid, PLAUSIBLE[self.name], self.name)
+
+    def _converted(self, raw: NDArray[Any], valid: NDArray[np.bool_], factor: float) -> Floats:
         values = raw.astype(np.float64)
         if (self.source.scale, self.source.offset) != (1.0, 0.0):
             values = values * self.source.scale + self.source.offset
-        if (self.conversion.factor, self.conversion.offset) != (1.0, 0.0):
-            values = values * self.conversion.factor + self.conversion.offset
-        if self.name == "vegetation" and self.spec.kind != "cover":
-            _check_plausible(self, values, valid, (-1.0 - 1e-6, 1.0 + 1e-6), "NDVI")
-            squared = self.spec.kind == "ndvi-squared"
-            values = cover_from_ndvi(
-                values, bare=self.spec.bare, dense=self.spec.dense, squared=squared
-            )
-        _check_plausible(self, values, valid, PLAUSIBLE[self.name], self.name)
-        return values
+        factor = self.conversion.factor * factor
+        if (factor, self.conversion.offset) != (1.0, 0.0):
+            values = values * factor + self.conversion.offset
+        if self.name != "vegetation" or self.spec.kind == "cover":
+            return values
+        _check_plausible(self, values, valid, (-1.0 - 1e-6, 1.0 + 1e-6), "NDVI")
+        squared = self.spec.kind == "ndvi-squared"
+        return cover_from_ndvi(values, bare=self.spec.bare, dense=self.spec.dense, squared=squared)
 
-    def _sampled(self, window: Window) -> Floats:
+    def _sampled(self, window: Window, month: int | None) -> Floats:
         plan = plan_points(self.grid, window, self.source, self.points)
         if plan is None:
             return np.full(window.shape, np.nan)
-        raw, valid = self.source.read(plan.rows, plan.cols)
-        values = self.decode(raw, valid)
+        values, valid = read_decoded(self, plan.rows, plan.cols, month)
         if self.points > 1 or self.spec.resampling == "nearest":
             return sample_nearest(plan, values, valid)
         return sample_bilinear(plan, self.source, values, valid)
@@ -167,20 +188,25 @@ def _raw(layer: Layer, value: float) -> float:
 
 
 def open_source(spec: LayerSpec) -> Source:
-    """Open a gridded file by what its first bytes say it is."""
+    """Open a gridded file, or several side by side, by what its first bytes say it is."""
+    if len(spec.paths) > 1:
+        from mapper.layers.mosaic import join  # noqa: PLC0415 - only where it is needed
+
+        parts = [open_source(replace(spec, path=one, paths=(one,))) for one in spec.paths]
+        return join(parts, where=spec.where)
     kind = file_kind(spec.path, where=spec.where)
     if kind == "geotiff":
         from mapper.layers.geotiff import open_geotiff  # noqa: PLC0415 - heavy import
 
         return open_geotiff(spec)
-    if kind == "netcdf":
+    if kind in ("netcdf", "zarr"):
         from mapper.layers.netcdf import open_netcdf  # noqa: PLC0415 - heavy import
 
         return open_netcdf(spec)
     raise ValuesError(
         "the file holds vectors, and a grid is needed",
         where=spec.where,
-        fix="a GeoTIFF or NetCDF file",
+        fix="a GeoTIFF, NetCDF or Zarr store",
     )
 
 
@@ -226,13 +252,18 @@ def place(source: Source, grid: Grid, *, where: str) -> Source:
     x, y = _rim(grid, window)
     source_x, source_y = transformer(grid.crs, source.crs).transform(x, y)
     good = np.isfinite(source_x) & np.isfinite(source_y)
-    if not good.any():
+    if not good.any() or _apart(source, source_x[good], source_y[good]):
         raise _misses(source, grid, where)
-    if parse_crs(source.crs).is_geographic:
-        source = replace(
-            source, x=nearest_turn(source.x, source_x[good].min(), source_x[good].max())
-        )
     return source
+
+
+def _apart(source: Source, x: Floats, y: Floats) -> bool:
+    """Whether points of the grid, in the source's CRS, lie all on one side of the source."""
+    if y.max() <= -source.y.edges[-1] or y.min() >= -source.y.edges[0]:
+        return True
+    if parse_crs(source.crs).is_geographic:
+        return False  # round the earth there are no sides
+    return bool(x.max() <= source.x.edges[0] or x.min() >= source.x.edges[-1])
 
 
 def _rim(grid: Grid, window: Window) -> tuple[Floats, Floats]:

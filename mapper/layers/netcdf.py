@@ -1,4 +1,4 @@
-"""CF NetCDF through xarray: raw values, and coordinates checked before they are believed."""
+"""CF NetCDF and Zarr by xarray: raw values; coordinates are checked before they are believed."""
 
 from __future__ import annotations
 
@@ -23,13 +23,17 @@ from mapper.layers.axis import (
     inside_the_poles,
     one_turn,
 )
-from mapper.layers.source import UNTAGGED_FILLS, Source, take
+from mapper.layers.source import UNTAGGED_FILLS, Source, stamp, take
+from mapper.layers.timeline import RawTime, Timeline, read_timeline
 
 _LON_LAT = "OGC:CRS84"
 
 
 @lru_cache(maxsize=32)
-def _opened(path: str) -> xr.Dataset:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.Dataset:
+    if Path(path).is_dir():
+        store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None)
+        return store
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
     return xr.open_dataset(
@@ -48,10 +52,18 @@ def open_netcdf(spec: LayerSpec) -> Source:
     FileFormatError, GridError, ValuesError.
     """
     try:
-        dataset = _opened(spec.path)
-    except (OSError, ValueError) as cause:
+        dataset = _opened(spec.path, stamp(spec.path))
+    except ImportError as cause:
         raise FileFormatError(
-            f"the file cannot be opened as NetCDF: {cause}", where=spec.where, fix="copy it again"
+            "Zarr needs the library zarr, which is not installed",
+            where=spec.where,
+            fix="pip install zarr, or a NetCDF file",
+        ) from cause
+    except (OSError, ValueError, KeyError) as cause:
+        raise FileFormatError(
+            f"the file cannot be opened as NetCDF or Zarr: {cause}",
+            where=spec.where,
+            fix="copy it again",
         ) from cause
     variable = _variable(dataset, spec)
     if variable.dtype.kind not in "iuf":
@@ -61,7 +73,14 @@ def open_netcdf(spec: LayerSpec) -> Source:
             fix="a variable of real numbers",
         )
     x_name, y_name = _horizontal(dataset, variable, spec)
-    _refuse_other_axes(variable, (x_name, y_name), spec)
+    time_name = _time_name(dataset, variable, (x_name, y_name), spec)
+    timeline = _timeline(dataset, time_name, spec)
+    if timeline is None and spec.years is not None:
+        raise ValuesError(
+            f"years = {list(spec.years)}, and variable {variable.name!r} has no time axis",
+            where=spec.where,
+            fix="remove years",
+        )
     crs = _crs(dataset, variable, x_name, spec)
     geographic = bool(parse_crs(crs).is_geographic)
     x = _axis(dataset, x_name, spec, southing=False, longitude=geographic)
@@ -72,7 +91,7 @@ def open_netcdf(spec: LayerSpec) -> Source:
     attrs = variable.attrs
     tagged = _nodata(variable, spec)
     return Source(
-        kind="netcdf",
+        kind="zarr" if Path(spec.path).is_dir() else "netcdf",
         path=spec.path,
         variable=str(variable.name),
         crs=crs,
@@ -88,6 +107,8 @@ def open_netcdf(spec: LayerSpec) -> Source:
         block=_chunk(variable, (y_name, x_name), (y.size, x.size)),
         label=_text(attrs.get("long_name") or attrs.get("standard_name")) or "",
         valid_range=_valid_range(variable, spec),
+        steps=timeline.steps if timeline else (),
+        notes=(timeline.note,) if timeline else (),
     )
 
 
@@ -168,15 +189,50 @@ def _is_axis(dataset: xr.Dataset, dim: str, axis: str) -> bool:
     return dim.lower() in plain[axis]
 
 
-def _refuse_other_axes(variable: xr.DataArray, used: tuple[str, str], spec: LayerSpec) -> None:
+def _time_name(
+    dataset: xr.Dataset, variable: xr.DataArray, used: tuple[str, str], spec: LayerSpec
+) -> str | None:
+    """The dimension along which steps of time lie; other dimensions may hold one value only."""
     others = {str(dim): size for dim, size in variable.sizes.items() if dim not in used}
+    times = [dim for dim in others if _is_time(dataset, dim)]
     for dim, size in others.items():
-        if size != 1:
+        if size != 1 and times[:1] != [dim]:
             raise ValuesError(
                 f"variable {variable.name!r} has {size} values along {dim!r}, and one is needed",
                 where=spec.where,
                 fix=f"the mean or one step along {dim!r}, in a file of its own",
             )
+    return times[0] if times else None
+
+
+def _is_time(dataset: xr.Dataset, dim: str) -> bool:
+    if dim not in dataset.variables:
+        return False
+    attrs = dataset[dim].attrs
+    units = str(attrs.get("units", ""))
+    named = dim.lower() in ("time", "t", "month", "months")
+    return named or " since " in units or attrs.get("standard_name") == "time"
+
+
+def _timeline(dataset: xr.Dataset, name: str | None, spec: LayerSpec) -> Timeline | None:
+    if name is None or (dataset.sizes[name] == 1 and spec.years is None):
+        return None
+    coordinate = dataset[name]
+    attrs = coordinate.attrs
+    climatology = "climatology" in attrs
+    bounds_name = str(attrs.get("climatology" if climatology else "bounds", ""))
+    bounds = None
+    if bounds_name in dataset.variables:
+        bounds = np.asarray(dataset[bounds_name], dtype=np.float64)
+    raw = RawTime(
+        name=name,
+        values=np.asarray(coordinate, dtype=np.float64),
+        units=_text(attrs.get("units")) or "",
+        calendar=(_text(attrs.get("calendar")) or "standard").lower(),
+        bounds=bounds,
+        climatology=climatology,
+    )
+    return read_timeline(raw, spec.years, where=spec.where)
 
 
 def _crs(dataset: xr.Dataset, variable: xr.DataArray, x_name: str, spec: LayerSpec) -> str:
@@ -277,13 +333,23 @@ def _chunk(
     return int(sizes[dims[0]]), int(sizes[dims[1]])
 
 
-def read_window(source: Source, rows: slice, cols: slice) -> tuple[NDArray[Any], NDArray[np.bool_]]:
-    """Read raw values for one window in file order; NetCDF has no separate mask."""
-    variable = _opened(source.path)[source.variable]
-    x_name, y_name = _dims(_opened(source.path), variable)
-    flat = variable.isel({dim: 0 for dim in variable.dims if dim not in (x_name, y_name)})
+def read_window(
+    source: Source, window: tuple[slice, slice], at: slice | None
+) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+    """Read raw values for one window in file order, steps in front; there is no separate mask."""
+    rows, cols = window
+    dataset = _opened(source.path, stamp(source.path))
+    variable = dataset[source.variable]
+    x_name, y_name = _dims(dataset, variable)
+    others = [str(dim) for dim in variable.dims if dim not in (x_name, y_name)]
+    time_name = next((dim for dim in others if _is_time(dataset, dim)), None) if at else None
+    flat = variable.isel({dim: 0 for dim in others if dim != time_name})
+    if time_name is not None:
+        flat = flat.isel({time_name: at}).transpose(time_name, y_name, x_name)
+    else:
+        flat = flat.transpose(y_name, x_name)
     try:
-        raw = take(flat.transpose(y_name, x_name), rows, cols)
+        raw = take(flat, rows, cols)
     except (OSError, RuntimeError) as cause:
         raise FileFormatError(
             f"rows {rows.start}..{rows.stop} of {source.variable!r} cannot be read: {cause}",

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.layers.axis import Axis, AxisPlan
+from mapper.layers.axis import whole_axis
 from mapper.layers.layer import Layer
 from mapper.layers.source import UNTAGGED_FILLS, Source
 
@@ -35,12 +35,4 @@ def _look(source: Source) -> NDArray[np.floating]:
     """Raw values of the whole file, or of a band in the middle of a large one."""
     n_rows = max(1, min(source.y.size, MOST_CELLS // max(source.x.size, 1)))
     first = (source.y.size - n_rows) // 2
-    return source.read_raw(_whole(source.y, first, first + n_rows), _whole(source.x, 0, None))
-
-
-def _whole(axis: Axis, start: int, stop: int | None) -> AxisPlan:
-    from scipy import sparse  # noqa: PLC0415
-
-    order = axis.order[start:stop]
-    empty = sparse.csr_matrix((0, order.size), dtype=np.float64)
-    return AxisPlan(start, start + order.size, empty, np.empty(0, dtype=np.int64), order)
+    return source.read_raw(whole_axis(source.y, first, first + n_rows), whole_axis(source.x))

@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 
 from mapper.errors import FileFormatError, MissingFileError, ValuesError
 from mapper.layers.axis import Axis, AxisPlan, regular_axis
+from mapper.layers.timeline import Step
 
 FileKind = Literal["geotiff", "netcdf", "zarr", "vector", "tiles"]
 
@@ -42,6 +43,8 @@ class Source:
     label: str
     notes: tuple[str, ...] = ()
     tagged_nodata: tuple[float, ...] = ()
+    steps: tuple[Step, ...] = ()
+    parts: tuple[Any, ...] = ()
     valid_range: tuple[float, float] = (-np.inf, np.inf)
 
     @property
@@ -54,33 +57,54 @@ class Source:
         """Whether raw values are whole numbers."""
         return np.dtype(self.dtype).kind in "iub"
 
-    def read(self, rows: AxisPlan, cols: AxisPlan) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+    @property
+    def has_months(self) -> bool:
+        """Whether the steps of the file say how each month differs from the others."""
+        return {step.month for step in self.steps} == set(range(1, 13))
+
+    def read(
+        self, rows: AxisPlan, cols: AxisPlan, at: slice | None = None
+    ) -> tuple[NDArray[Any], NDArray[np.bool_]]:
         """Read raw values and which of them are data, in normalised order.
+
+        Parameters
+        ----------
+        at : positions along the time axis; None reads a file without one.
 
         Returns
         -------
-        Two arrays of shape (rows.stop - rows.start, cols.stop - cols.start).
+        Two arrays of shape (rows.stop - rows.start, cols.stop - cols.start), with the steps in
+        front where there are any.
         """
-        raw, mask = self._read(rows, cols)
+        if self.kind == "tiles":
+            from mapper.layers.mosaic import read_tiles  # noqa: PLC0415 - it imports this module
+
+            return read_tiles(self, rows, cols, at)
+        raw, mask = self._read(rows, cols, at)
         return raw, mask & self.is_data(raw)
 
-    def _read(self, rows: AxisPlan, cols: AxisPlan) -> tuple[NDArray[Any], NDArray[np.bool_]]:
+    def _read(
+        self, rows: AxisPlan, cols: AxisPlan, at: slice | None
+    ) -> tuple[NDArray[Any], NDArray[np.bool_]]:
         if self.kind == "geotiff":
             from mapper.layers.geotiff import read_window  # noqa: PLC0415 - heavy import
         else:
             from mapper.layers.netcdf import read_window  # noqa: PLC0415 - heavy import
 
         pieces = [
-            [read_window(self, run_rows, run_cols) for run_cols in runs(cols.file_index)]
+            [read_window(self, (run_rows, run_cols), at) for run_cols in runs(cols.file_index)]
             for run_rows in runs(rows.file_index)
         ]
+        if len(pieces) == len(pieces[0]) == 1:
+            return pieces[0][0]
         raw = np.block([[piece[0] for piece in row] for row in pieces])
         mask = np.block([[piece[1] for piece in row] for row in pieces])
         return raw, mask
 
     def read_raw(self, rows: AxisPlan, cols: AxisPlan) -> NDArray[Any]:
-        """Read raw values alone, whether they are data or not."""
-        return self._read(rows, cols)[0]
+        """Read raw values alone, whether they are data or not; of the first step where several."""
+        at = slice(self.steps[0].index, self.steps[0].index + 1) if self.steps else None
+        return self._read(rows, cols, at)[0]
 
     def is_data(self, raw: NDArray[Any]) -> NDArray[np.bool_]:
         """Which raw values are data: not a nodata value, not NaN, not infinite."""
@@ -130,17 +154,27 @@ def _as_dtype(value: float, dtype: np.dtype[Any]) -> Any:
 
 def runs(index: NDArray[np.int64]) -> list[slice]:
     """Cut positions in a file into stretches ``low:high``, with step -1 where they run down."""
-    pieces = np.split(index, np.flatnonzero(np.abs(np.diff(index)) != 1) + 1)
+    pieces: list[NDArray[np.int64]] = []
+    for piece in np.split(index, np.flatnonzero(np.abs(np.diff(index)) != 1) + 1):
+        one_way = piece.size < 3 or bool((np.diff(piece) == piece[1] - piece[0]).all())
+        # back and forth, as round the earth on two cells: cell by cell
+        pieces.extend([piece] if one_way else np.split(piece, piece.size))
     return [
         slice(int(piece.min()), int(piece.max()) + 1, -1 if piece[-1] < piece[0] else 1)
         for piece in pieces
     ]
 
 
+def stamp(path: str) -> tuple[int, int]:
+    """Size and time of a file, so that one that was written anew is opened anew."""
+    about = Path(path).stat()
+    return about.st_size, about.st_mtime_ns
+
+
 def take(array: Any, rows: slice, cols: slice) -> NDArray[Any]:
     """Read the stretches of `runs` from something that forward slices index."""
-    values = np.asarray(array[rows.start : rows.stop, cols.start : cols.stop])
-    return values[:: rows.step, :: cols.step]
+    values = np.asarray(array[..., rows.start : rows.stop, cols.start : cols.stop])
+    return values[..., :: rows.step, :: cols.step]
 
 
 def north_up_axes(
@@ -193,8 +227,12 @@ def file_kind(path: str, *, where: str) -> FileKind:
             fix=f"a file that exists in {file.parent}",
         )
     if file.is_dir():
+        if any((file / one).is_file() for one in (".zgroup", ".zmetadata", "zarr.json")):
+            return "zarr"
         raise FileFormatError(
-            f"{file.name!r} is a folder", where=where, fix="a GeoTIFF, NetCDF or vector file"
+            f"{file.name!r} is a folder, and no Zarr store",
+            where=where,
+            fix="a file, or a Zarr store",
         )
     with file.open("rb") as stream:
         head = stream.read(64)

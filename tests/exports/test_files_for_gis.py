@@ -49,7 +49,7 @@ def test_geopackage_meets_the_basic_requirements_of_its_standard(island_run: Pat
 
 
 def test_geoparquet_holds_the_same_regions(island_run: Path) -> None:
-    import geopandas  # noqa: PLC0415
+    import geopandas
 
     frame = geopandas.read_parquet(island_run / "regions.parquet")
     other = pyogrio.read_dataframe(island_run / "regions.gpkg", layer="regions")

@@ -34,7 +34,7 @@ def browser() -> Iterator[Any]:
     path = shutil.which("chromium")
     if path is None:
         _missing("chromium (apt-get install chromium)")
-    from playwright.sync_api import sync_playwright  # noqa: PLC0415
+    from playwright.sync_api import sync_playwright
 
     with sync_playwright() as play:
         found = play.chromium.launch(executable_path=path, args=["--no-sandbox", "--disable-gpu"])
@@ -98,7 +98,7 @@ def test_the_pointer_reads_what_the_table_holds(opened: Any, island_run: Path) -
 
 
 def test_a_cell_reads_what_the_map_holds(opened: Any, island_run: Path) -> None:
-    import rasterio  # noqa: PLC0415
+    import rasterio
 
     with rasterio.open(island_run / "maps" / "drawdown.tif") as dataset:
         cells = dataset.read(1)

@@ -45,10 +45,10 @@ def test_no_cell_of_the_workbook_is_a_formula(unkind_run: Path) -> None:
 def test_two_workbooks_of_the_same_numbers_have_the_same_bytes(
     unkind_run: Path, tmp_path: Path
 ) -> None:
-    from dataclasses import replace  # noqa: PLC0415
+    from dataclasses import replace
 
-    from mapper.job import load_job  # noqa: PLC0415
-    from mapper.pipeline import run  # noqa: PLC0415
+    from mapper.job import load_job
+    from mapper.pipeline import run
 
     title = json.loads((unkind_run / "run.json").read_text())["title"]
     job = replace(load_job(unkind_run.parent / "job.toml"), title=title)
@@ -60,7 +60,7 @@ def test_two_workbooks_of_the_same_numbers_have_the_same_bytes(
 
 
 def test_parquet_holds_the_numbers_of_the_table(island_run: Path) -> None:
-    from pyarrow import parquet  # noqa: PLC0415
+    from pyarrow import parquet
 
     table = read_table(island_run / "tables" / "regions_by_rock.csv")
     stored = parquet.read_table(island_run / "tables" / "regions_by_rock.parquet").to_pydict()
@@ -71,14 +71,14 @@ def test_parquet_holds_the_numbers_of_the_table(island_run: Path) -> None:
 
 
 def test_unkind_names_come_through_parquet_unchanged(unkind_run: Path, names: tuple[str]) -> None:
-    from pyarrow import parquet  # noqa: PLC0415
+    from pyarrow import parquet
 
     stored = parquet.read_table(unkind_run / "tables" / "regions.parquet").to_pydict()
     assert tuple(stored["region"]) == (*names, "outside", "all")
 
 
 def test_netcdf_holds_the_maps_and_passes_a_cf_checker(island_run: Path, tmp_path: Path) -> None:
-    import h5netcdf  # noqa: PLC0415
+    import h5netcdf
 
     path = island_run / "maps" / "maps.nc"
     with h5netcdf.File(path) as file:
@@ -87,7 +87,7 @@ def test_netcdf_holds_the_maps_and_passes_a_cf_checker(island_run: Path, tmp_pat
                 np.testing.assert_array_equal(file[name][:], dataset.read(1))
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # the checker's own libraries warn
-        from compliance_checker.runner import CheckSuite, ComplianceChecker  # noqa: PLC0415
+        from compliance_checker.runner import CheckSuite, ComplianceChecker
 
         CheckSuite.load_all_available_checkers()
         passed, errors = ComplianceChecker.run_checker(
@@ -116,7 +116,7 @@ def test_the_record_lists_every_file_with_its_hash(island_run: Path) -> None:
 
 
 def test_the_crate_is_read_by_an_independent_reader(unkind_run: Path) -> None:
-    from rocrate.rocrate import ROCrate  # noqa: PLC0415
+    from rocrate.rocrate import ROCrate
 
     crate = ROCrate(unkind_run)
     present = {

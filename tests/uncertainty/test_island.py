@@ -12,7 +12,7 @@ from mapper.accounting import tonnes_per_mole
 from mapper.engine import KEPT, evaluate_block, evaluate_block_states
 from mapper.grid import Window
 from mapper.job import load_job
-from mapper.pipeline import run
+from mapper.pipeline import Engine, run
 from mapper.planning import make_plan
 from mapper.scheme import Scheme, with_values
 from mapper.states import to_states
@@ -88,14 +88,14 @@ def test_tables_have_the_same_bytes_for_any_block_shape_and_threads(tmp_path, mo
     job = load_job(ISLAND)
     found = []
     for at, (shape, threads) in enumerate((((700, 900), 1), ((256, 300), 2), ((97, 900), 2))):
-        monkeypatch.setattr(mapper.pipeline, "block_shape", lambda _, shape=shape: shape)
-        run(job, out=tmp_path / str(at), threads=threads)
+        monkeypatch.setattr(mapper.pipeline, "block_shape", lambda *_, shape=shape: shape)
+        run(job, out=tmp_path / str(at), engine=Engine(threads=threads))
         found.append([(tmp_path / str(at) / f"tables/{name}.csv").read_bytes() for name in TABLES])
     assert found[0] == found[1] == found[2]
 
 
 def test_intervals_hold_the_central_total_and_widen_no_area(tmp_path):
-    import pandas as pd  # noqa: PLC0415
+    import pandas as pd
 
     job = load_job(ISLAND)
     run(replace(job, uncertainty=None, ranking=None), out=tmp_path / "plain")

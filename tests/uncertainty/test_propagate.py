@@ -92,7 +92,7 @@ def test_intervals_cover_the_truth_in_nine_of_ten_worlds():
     """A world's numbers are measured with error; the spread is that error."""
     worlds, draws = 500, 300
     areas = {"basalt": [3e6], "granite": [9e6]}
-    from mapper.uncertainty.draws import draw_quantiles  # noqa: PLC0415
+    from mapper.uncertainty.draws import draw_quantiles
 
     errors = draw_quantiles(UncertaintySpec(draws=worlds, seed=11), ("b", "g", "q"), where="")
     covered = 0
@@ -118,9 +118,9 @@ def test_intervals_cover_the_truth_in_nine_of_ten_worlds():
 
 
 def test_a_spread_across_a_physical_limit_is_held_there_and_counted():
-    from mapper.uncertainty.draws import draw_quantiles  # noqa: PLC0415
-    from mapper.uncertainty.propagate import draw_samples  # noqa: PLC0415
-    from mapper.uncertainty.quantities import find_doubts  # noqa: PLC0415
+    from mapper.uncertainty.draws import draw_quantiles
+    from mapper.uncertainty.propagate import draw_samples
+    from mapper.uncertainty.quantities import find_doubts
 
     spec = UncertaintySpec(draws=1000, kept_share=NO_KEPT_SPREAD)
     the_job = job(spec, concentration=spread(sd=0.479))
