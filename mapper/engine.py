@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from enum import IntFlag
 from typing import NamedTuple
 
@@ -12,9 +12,10 @@ from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
 from mapper.grid import Grid, Window, cell_areas
-from mapper.hydrology import derive_runoff
+from mapper.job import WaterSpec
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
+from mapper.layers.water import derive_water
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import RockLaw, Scheme
@@ -65,6 +66,9 @@ class Plan:
     scheme: Scheme
     regions: Regions | None
     notes: tuple[str, ...] = ()
+    water: WaterSpec = field(default_factory=WaterSpec)
+    month_shares: tuple[float, ...] = ()
+    """Parts of a year that the twelve months take, where the rates of months are averaged."""
 
     @property
     def n_regions(self) -> int:
@@ -152,30 +156,47 @@ def _outside_flag(name: str) -> Flag:
     return Flag.TEMPERATURE_OUTSIDE if name == "temperature" else Flag.OTHER_OUTSIDE
 
 
-def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
-    """The layers that the laws read, on a window, each of shape (n_cells,)."""
+def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[str, Floats]:
+    """The layers that the laws read, on a window, each of shape (n_cells,).
+
+    Parameters
+    ----------
+    month : 1..12 for the mean of that month, None for the mean of whole years. Runoff that is
+        derived is the year's in every month, since the methods hold for years.
+    """
     needed = plan.scheme.input_names()
     inputs = {
-        name: plan.layers[name].values(window).ravel() for name in needed if name in plan.layers
+        name: plan.layers[name].values(window, month).ravel()
+        for name in needed
+        if name in plan.layers
     }
     if "runoff" in needed and "runoff" not in plan.layers:
-        water = plan.layers["precipitation"].values(window).ravel()
-        warmth = inputs.get("temperature")
-        if warmth is None:
-            warmth = plan.layers["temperature"].values(window).ravel()
-        inputs["runoff"] = derive_runoff(plan.water_method, water, warmth)
+        inputs["runoff"] = derive_water(plan.water, plan.layers, plan.grid, window).runoff
     return inputs
 
 
 def evaluate_block(plan: Plan, window: Window) -> tuple[BlockMaps, BlockSums]:
     """Read, align and evaluate one block: its part of each map, and its sums."""
     rocks = plan.lithology.rock_cells(window)
-    inputs = read_inputs(plan, window)
-    rate, flags = _evaluate_entries(plan.scheme, rocks, inputs)
+    rate, flags = _evaluate_window(plan, rocks, window)
     maps = _to_cells(rocks, rate, flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
     return maps, _sum_block(plan, rocks, RockResult(rate, flags), (regions, areas, maps))
+
+
+def _evaluate_window(plan: Plan, rocks: RockCells, window: Window) -> tuple[Floats, Bits]:
+    """The rate of the mean climate, or the mean of the rates of the months."""
+    if not plan.month_shares:
+        return _evaluate_entries(plan.scheme, rocks, read_inputs(plan, window))
+    rate = np.zeros(rocks.cell.size)
+    flags = np.zeros(rocks.cell.size, dtype=np.uint8)
+    for month, share in enumerate(plan.month_shares, start=1):
+        inputs = read_inputs(plan, window, month)
+        month_rate, month_flags = _evaluate_entries(plan.scheme, rocks, inputs)
+        rate += share * month_rate
+        flags |= month_flags
+    return rate, flags
 
 
 def _evaluate_entries(

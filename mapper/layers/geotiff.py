@@ -198,8 +198,13 @@ def _sidecars(spec: LayerSpec) -> tuple[str, ...]:
     return tuple(f"{name} beside it is not used" for name in found if not name.endswith(".msk"))
 
 
-@lru_cache(maxsize=32)
 def _opened(path: str) -> xr.DataArray:
+    """The open file; one that was written anew is opened anew."""
+    return _open_version(path, Path(path).stat().st_mtime_ns)
+
+
+@lru_cache(maxsize=32)
+def _open_version(path: str, _changed: int) -> xr.DataArray:
     opened = rioxarray.open_rasterio(
         path, driver="GTiff", lock=False, masked=False, parse_coordinates=False, cache=False
     )

@@ -29,8 +29,13 @@ from mapper.layers.timeline import RawTime, Timeline, read_timeline
 _LON_LAT = "OGC:CRS84"
 
 
-@lru_cache(maxsize=32)
 def _opened(path: str) -> xr.Dataset:
+    """The open file; one that was written anew is opened anew."""
+    return _open_version(path, Path(path).stat().st_mtime_ns)
+
+
+@lru_cache(maxsize=32)
+def _open_version(path: str, _changed: int) -> xr.Dataset:
     if Path(path).is_dir():
         store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None)
         return store
