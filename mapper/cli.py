@@ -3,13 +3,19 @@
 from __future__ import annotations
 
 import argparse
+import re
 import sys
 import time
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, TextIO
 
 if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
+
     from mapper.pipeline import RunResult
+    from mapper.ranking import Ranking
+    from mapper.uncertainty.spread import SpreadFound
 
 DONE, OUR_FAULT, USERS_INPUT = 0, 1, 2
 
@@ -50,10 +56,17 @@ def _parser() -> argparse.ArgumentParser:
     run.add_argument("--out", metavar="DIR", help="folder to write; default: the job's own")
     run.add_argument("--fresh", action="store_true", help="start over where a run was cut short")
     run.add_argument("--threads", type=_positive, metavar="N", help="default: all processors")
+    run.add_argument(
+        "--scheduler", metavar="ADDRESS", help="a dask scheduler, or 'local' for processes here"
+    )
+    run.add_argument("--memory", type=_size, metavar="SIZE", help="such as 2GB; default 2GB")
     run.set_defaults(action=_run)
     inspect = commands.add_parser("inspect", help="look at a job before it runs, problems and all")
     inspect.add_argument("job", metavar="JOB", help="the job file (TOML)")
     inspect.set_defaults(action=_inspect)
+    verify = commands.add_parser("verify", help="check that a run folder is what it claims")
+    verify.add_argument("folder", metavar="RUN", help="the folder of a finished run")
+    verify.set_defaults(action=_verify)
     laws = commands.add_parser("laws", help="list the rate laws, or show one")
     laws.add_argument("name", nargs="?", metavar="NAME", help="a law to show in full")
     laws.set_defaults(action=_laws)
@@ -66,14 +79,27 @@ def _positive(text: str) -> int:
     return int(text)
 
 
-def _run(chosen: argparse.Namespace) -> int:
-    from mapper.job import load_job  # noqa: PLC0415
-    from mapper.pipeline import run  # noqa: PLC0415
+def _size(text: str) -> float:
+    match = re.fullmatch(r"([0-9.]+)\s*([kMGT]?)i?B?", text.strip())
+    if not match or float(match[1]) <= 0:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a size such as 500MB or 2GB")
+    return float(match[1]) * 1000.0 ** " kMGT".index(match[2] or " ")
 
+
+def _run(chosen: argparse.Namespace) -> int:
+    from mapper.pipeline import Engine, run  # noqa: PLC0415
+    from mapper.planning import open_job  # noqa: PLC0415
+
+    asked = {name: getattr(chosen, name) for name in ("threads", "scheduler", "memory")}
+    given = {name: value for name, value in asked.items() if value is not None}
     bar = ProgressBar(sys.stderr)
-    job = load_job(chosen.job)
+    job = open_job(chosen.job)
     result = run(
-        job, out=chosen.out, fresh=chosen.fresh, threads=chosen.threads, progress=bar.update
+        job,
+        out=chosen.out,
+        fresh=chosen.fresh,
+        engine=Engine(**given),
+        progress=bar.update,
     )
     bar.close()
     print("\n".join(summary_lines(job.title, result)))  # noqa: T201
@@ -85,19 +111,62 @@ def summary_lines(title: str, result: RunResult) -> list[str]:
     found = result.totals
     consumption, drawdown = found.consumption.sum(), found.drawdown.sum()
     mapped, valid = found.rock_area.sum(), found.valid_area.sum()
+    bars = ["", ""] if result.spread is None else _error_bars(result.spread.intervals.everything)
     lines = [
         title,
-        f"  drawdown, long term      {drawdown:14,.0f} t CO2 per year",
-        f"  consumption, short term  {consumption:14,.0f} t CO2 per year",
+        f"  drawdown, long term      {drawdown:14,.0f} t CO2 per year{bars[1]}",
+        f"  consumption, short term  {consumption:14,.0f} t CO2 per year{bars[0]}",
         f"  over {valid:,.0f} km2: {100 * valid / mapped if mapped else 0:.1f} % of the "
         f"{mapped:,.0f} km2 of mapped rock had data",
     ]
     flagged = float(found.outside_range.sum())
     if flagged:
         lines.append(f"  {flagged:,.0f} km2 lie outside the range that their law was fitted in")
-    lines.extend(_top_regions(result))
+    if result.ranking is None:
+        lines.extend(_top_regions(result))
+    else:
+        lines.extend(_ranked_regions(result.ranking))
+    if result.spread is not None:
+        lines.extend(_driving_quantities(result.spread))
     lines.append(f"  {result.folder} ({result.seconds:.1f} s)")
     lines.append("  A screening estimate, not verified removal.")
+    return lines
+
+
+def _error_bars(everything: NDArray[np.float64]) -> list[str]:
+    return [f", 5 to 95 %: {low:,.0f} to {high:,.0f}" for low, _, high in everything]
+
+
+def _ranked_regions(ranking: Ranking) -> list[str]:
+    from mapper.ranking import ranking_lines  # noqa: PLC0415
+
+    unit = "t CO2 per km2 and year" if ranking.spec.by.endswith("km2_yr") else "t CO2 per year"
+    lines = [f"  most {ranking.spec.by.split('_')[0]}, {unit}:"]
+    width = max((len(one.region) for one in ranking.places[:5]), default=0)
+    for one in ranking.places[:5]:
+        low_high = (
+            "" if one.interval is None else f"  ({one.interval[0]:,.4g} to {one.interval[2]:,.4g})"
+        )
+        lines.append(f"    {one.region:{width}}  {one.value:14,.4g}{low_high}")
+    lines += [f"    {line}" for line in ranking_lines(ranking, most=5)]
+    if ranking.left_out:
+        lines.append(f"    {len(ranking.left_out)} regions left out by the ranking's conditions")
+    return lines
+
+
+def _driving_quantities(spread: SpreadFound) -> list[str]:
+    """What drives the spread of the drawdown most, and where the totals over states are off."""
+    from mapper.uncertainty.spread import MOST_APART  # noqa: PLC0415
+
+    share = spread.drawdown_shares.share
+    most = sorted((key for key in share if share[key] > 0), key=lambda key: -share[key])[:3]
+    lines = []
+    if most:
+        told = ", ".join(f"{key} {100 * share[key]:.0f} %" for key in most)
+        lines.append(f"  what drives the spread of the drawdown: {told}")
+    worst = max(spread.drawn.apart.values())
+    if worst > MOST_APART:
+        lines.append(f"  intervals are rough: totals over states are off by up to {worst:.1e}")
     return lines
 
 
@@ -114,11 +183,21 @@ def _top_regions(result: RunResult) -> list[str]:
 
 
 def _inspect(chosen: argparse.Namespace) -> int:
-    from mapper.job import load_job  # noqa: PLC0415
     from mapper.pipeline import inspect  # noqa: PLC0415
+    from mapper.planning import open_job  # noqa: PLC0415
 
-    report = inspect(load_job(chosen.job))
+    report = inspect(open_job(chosen.job))
     print("\n".join(report.lines()))  # noqa: T201
+    return DONE
+
+
+def _verify(chosen: argparse.Namespace) -> int:
+    from mapper.exports.verify import verify  # noqa: PLC0415
+
+    found = verify(chosen.folder)
+    print("\n".join(f"checked  {line}" for line in found.checked))  # noqa: T201
+    found.raise_if_different()
+    print("The folder is what its record claims.")  # noqa: T201
     return DONE
 
 

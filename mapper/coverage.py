@@ -134,21 +134,24 @@ def _cover_tile(
                  cols.start - tile.col : cols.stop - tile.col]  # fmt: skip
     target = single[rows.start - window.row : rows.stop - window.row,
                     cols.start - window.col : cols.stop - window.col]  # fmt: skip
+    first = (rows.start - window.row) * window.n_cols + cols.start - window.col
+
+    def enter(here: NDArray[np.bool_], polygon: NDArray[Any] | int, share: Floats) -> None:
+        at_row, at_col = np.nonzero(here)
+        if at_row.size:
+            cell = first + at_row * window.n_cols + at_col
+            held = np.broadcast_to(polygon, target.shape)[at_row, at_col].astype(np.int64)
+            pieces.append((cell, held, share[at_row, at_col]))
+            target[at_row, at_col] = MIXED
+
     for position in _touching(polygons.bounds, tile):
         share = cover_tile(polygons.edges[position], tile)[part]
-        taken = (share > 0.0) & (target != NONE)
-        divided = ((share > 0.0) & (share < 1.0)) | taken
-        target[(share == 1.0) & ~taken] = position
-        at_row, at_col = np.nonzero(divided)
-        if not at_row.size:
-            continue
-        cell = (at_row + rows.start - window.row) * window.n_cols
-        cell += at_col + cols.start - window.col
-        held = target[at_row, at_col]
-        whole = held >= 0  # another polygon fills the cell: a sliver, or an overlap
-        pieces.append((cell[whole], held[whole].astype(np.int64), np.ones(int(whole.sum()))))
-        pieces.append((cell, np.full(cell.size, position), share[at_row, at_col]))
-        target[at_row, at_col] = MIXED
+        touched = share > 0.0
+        # a cell that an earlier polygon fills becomes divided: overlaps show as cover above one
+        enter(touched & (target >= 0), target.copy(), np.ones(target.shape))
+        alone = (share == 1.0) & (target == NONE)
+        target[alone] = position
+        enter(touched & ~alone, int(position), share)
 
 
 def _touching(bounds: Floats, tile: Window) -> Ints:

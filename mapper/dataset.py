@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import partial
 from typing import Any
 
 import dask.array as da
@@ -15,6 +16,7 @@ from mapper.accounting import drawdown_share, to_rate
 from mapper.engine import evaluate_rock
 from mapper.errors import LawError
 from mapper.grid import Grid, Window
+from mapper.hydrology import derive_runoff
 from mapper.job import Job
 from mapper.laws import LAWS, Law
 from mapper.layers.layer import QUANTITY, Layer
@@ -60,12 +62,22 @@ def open_layers(job: Job, *, chunks: tuple[int, int] | None = None) -> xr.Datase
     }
     for name, layer in plan.layers.items():
         variables[name] = (("y", "x"), _lazy_values(layer, grid, shape))
+    derived = "runoff" not in variables and "runoff" in plan.scheme.input_names()
+    if derived:
+        climate = [variables[name][1] for name in ("precipitation", "temperature")]
+        runoff = da.map_blocks(
+            partial(derive_runoff, plan.water_method), *climate, dtype=np.float64
+        )
+        variables["runoff"] = (("y", "x"), runoff)
     dataset = xr.Dataset(variables, coords={"rock": list(rocks), **_coordinates(grid)})
     dataset["rock_share"].attrs = {"units": "1", "long_name": "share of the cell that a rock takes"}
     for name in plan.layers:
         dataset[name].attrs = {"units": INNER_UNIT[QUANTITY[name]], "long_name": name}
         if name in _STANDARD_NAMES:
             dataset[name].attrs["standard_name"] = _STANDARD_NAMES[name]
+    if derived:
+        long_name = f"runoff derived by {plan.water_method}"
+        dataset["runoff"].attrs = {"units": INNER_UNIT["water"], "long_name": long_name}
     dataset.attrs = {"title": job.title, "Conventions": "CF-1.11"}
     dataset.encoding["scheme"] = plan.scheme
     return _with_crs(dataset, grid)

@@ -19,6 +19,8 @@ from mapper.layers.water import derive_water
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import RockLaw, Scheme
+from mapper.states import AXES as STATE_AXES
+from mapper.states import StateCounts, StateLayout, count_states, merge_states
 from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
@@ -69,6 +71,12 @@ class Plan:
     water: WaterSpec = field(default_factory=WaterSpec)
     month_shares: tuple[float, ...] = ()
     """Parts of a year that the twelve months take, where the rates of months are averaged."""
+
+    def parts_of_year(self) -> list[tuple[int | None, float]]:
+        """Months and their parts of the year where rates are averaged, else the year whole."""
+        if not self.month_shares:
+            return [(None, 1.0)]
+        return list(enumerate(self.month_shares, start=1))
 
     @property
     def n_regions(self) -> int:
@@ -177,12 +185,77 @@ def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[st
 
 def evaluate_block(plan: Plan, window: Window) -> tuple[BlockMaps, BlockSums]:
     """Read, align and evaluate one block: its part of each map, and its sums."""
+    maps, sums, _ = evaluate_block_states(plan, window, None)
+    return maps, sums
+
+
+def evaluate_block_states(
+    plan: Plan, window: Window, layout: StateLayout | None
+) -> tuple[BlockMaps, BlockSums, StateCounts | None]:
+    """Evaluate one block, and count the area in each state where a layout is given."""
     rocks = plan.lithology.rock_cells(window)
-    rate, flags = _evaluate_window(plan, rocks, window)
-    maps = _to_cells(rocks, rate, flags, window)
+    result = RockResult(*_evaluate_window(plan, rocks, window))
+    maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
-    return maps, _sum_block(plan, rocks, RockResult(rate, flags), (regions, areas, maps))
+    ground = _split_ground(rocks, regions, areas)
+    sums = _sum_block(plan, result, ground, (regions, areas, maps))
+    if layout is None:
+        return maps, sums, None
+    counts = [
+        _count_block(plan, layout, result, ground.part(share), read_inputs(plan, window, month))
+        for month, share in plan.parts_of_year()
+    ]
+    return maps, sums, counts[0] if len(counts) == 1 else merge_states(counts)
+
+
+class _Ground(NamedTuple):
+    """Pieces of ground: position of the entry, cell, region * N_ROCKS + rock, and area [m2]."""
+
+    entry: Ints
+    cell: Ints
+    key: Ints
+    area: Floats
+
+    def part(self, share: float) -> _Ground:
+        """The same pieces for a part of the year."""
+        return self if share == 1.0 else self._replace(area=self.area * share)
+
+
+def _split_ground(rocks: RockCells, regions: RegionCells, areas: Floats) -> _Ground:
+    pieces = regions.split(rocks.cell)
+    cell = rocks.cell[pieces.entry]
+    key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
+    return _Ground(pieces.entry, cell, key, areas[cell] * rocks.share[pieces.entry] * pieces.part)
+
+
+def _count_block(
+    plan: Plan,
+    layout: StateLayout,
+    result: RockResult,
+    ground: _Ground,
+    inputs: Mapping[str, Floats],
+) -> StateCounts:
+    """Count the states of the pieces that weather and have a result."""
+    laws = [plan.scheme.by_rock.get(name) for name in ROCK_NAMES]
+    weathers = np.array([one is not None for one in laws])
+    rock = (ground.key % N_ROCKS).astype(np.int8)
+    chosen = weathers[rock] & ~np.isnan(result.rate)[ground.entry]
+    cell, key, area = ground.cell, ground.key, ground.area
+    if not chosen.all():
+        cell, key, area, rock = cell[chosen], key[chosen], area[chosen], rock[chosen]
+    places: dict[str, NDArray[np.int32]] = {}
+    for name in layout.names:
+        reads = np.array([one is None or name in one.law.input_names for one in laws])
+        places[name] = STATE_AXES[name].place(inputs[name])[cell]
+        if not reads.all():
+            places[name] *= reads[rock]
+    return count_states(layout, key, area, places, unit_exponent(plan.grid))
+
+
+def state_layout(plan: Plan) -> StateLayout:
+    """Which layers the states of a plan are made of."""
+    return StateLayout(plan.scheme.input_names(), N_ROCKS)
 
 
 def _evaluate_window(plan: Plan, rocks: RockCells, window: Window) -> tuple[Floats, Bits]:
@@ -191,7 +264,7 @@ def _evaluate_window(plan: Plan, rocks: RockCells, window: Window) -> tuple[Floa
         return _evaluate_entries(plan.scheme, rocks, read_inputs(plan, window))
     rate = np.zeros(rocks.cell.size)
     flags = np.zeros(rocks.cell.size, dtype=np.uint8)
-    for month, share in enumerate(plan.month_shares, start=1):
+    for month, share in plan.parts_of_year():
         inputs = read_inputs(plan, window, month)
         month_rate, month_flags = _evaluate_entries(plan.scheme, rocks, inputs)
         rate += share * month_rate
@@ -261,24 +334,21 @@ def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> Bl
 
 def _sum_block(
     plan: Plan,
-    rocks: RockCells,
     result: RockResult,
-    ground: tuple[RegionCells, Floats, BlockMaps],
+    ground: _Ground,
+    cells: tuple[RegionCells, Floats, BlockMaps],
 ) -> BlockSums:
-    regions, areas, maps = ground
+    regions, areas, maps = cells
     exponent = unit_exponent(plan.grid)
     n_regions = plan.n_regions
     every = regions.split(np.arange(areas.size))
     area = add_up(every.region, areas[every.entry] * every.part, n_regions, exponent)
-    pieces = regions.split(rocks.cell)
-    entry = pieces.entry
-    key = pieces.region * N_ROCKS + rocks.rock[entry]
-    held = areas[rocks.cell[entry]] * rocks.share[entry] * pieces.part
-    rate = result.rate[entry]
+    key, held = ground.key, ground.area
+    rate = result.rate[ground.entry]
     good = ~np.isnan(rate)
     n_keys = n_regions * N_ROCKS
     shape = (n_regions, N_ROCKS, LIMBS)
-    flags = result.flags[entry]
+    flags = result.flags[ground.entry]
     runs = runs_of(key)
     rock_area = valid_area = add_up(runs, held, n_keys, exponent)
     if not good.all():

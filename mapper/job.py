@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import math
 import os
 import re
 from collections.abc import Mapping
@@ -10,6 +11,13 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from mapper.doubts import (
+    RankingSpec,
+    UncertaintySpec,
+    ranking_spec,
+    spread_of,
+    uncertainty_spec,
+)
 from mapper.errors import JobError, Problems
 from mapper.laws import Spread
 from mapper.rocks import ROCK_NAMES
@@ -28,6 +36,8 @@ LAYER_NAMES = (
     "potential_evapotranspiration",
     "soil_co2",
     "reference_consumption",
+    "elevation",
+    "coarse_elevation",
 )
 
 VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
@@ -43,8 +53,11 @@ RUNOFF_METHODS = (
 POTENTIAL_METHODS = ("oudin-2005", "hamon-1963", "thornthwaite-1948")
 TIME_MEANS = ("climate", "rates")
 REGISTRATIONS = ("cell", "node")
+DOWNSCALING = ("none", "lapse-rate")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
+WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
+ALSO = ("netcdf", "geoparquet")
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -70,6 +83,8 @@ class LayerSpec:
     registration: str | None = None
     paths: tuple[str, ...] = ()
     years: tuple[int, int] | None = None
+    downscale: str = "none"
+    lapse_rate: float | None = None
 
     @property
     def where(self) -> str:
@@ -89,11 +104,15 @@ class GridSpec:
 
 @dataclass(frozen=True, kw_only=True)
 class ParameterSpec:
-    """A parameter that the job sets: a value for all rocks, or one for each, and a spread."""
+    """A parameter that the job sets: a value for all rocks, or one for each, and a spread.
+
+    ``per_rock`` is None where the job does not say whether each rock is drawn for itself.
+    """
 
     value: float | None = None
     by_rock: Mapping[str, float] = field(default_factory=dict)
     spread: Spread | None = None
+    per_rock: bool | None = None
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -137,6 +156,9 @@ class Job:
     law: LawSpec
     regions: RegionsSpec | None
     folder: str
+    uncertainty: UncertaintySpec | None = None
+    ranking: RankingSpec | None = None
+    write: tuple[str, ...] = WRITTEN
     time_mean: str = "climate"
 
     @property
@@ -157,6 +179,25 @@ def load_job(path: str | Path) -> Job:
     ------
     MissingFileError, JobError, or ManyProblemsError with every problem that the file itself has.
     """
+    job, problems = read_job(path)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
+
+
+def read_job(path: str | Path) -> tuple[Job | None, Problems]:
+    """Read a job file with its problems, so that more can be gathered before they are raised.
+
+    Returns
+    -------
+    The job, wrong values replaced by defaults, or None where so much is missing that nothing
+    more can be looked at; and the problems.
+
+    Raises
+    ------
+    MissingFileError, JobError where the file cannot be read at all.
+    """
     path = Path(path).absolute()
     table = read_toml(path)
     problems = Problems()
@@ -171,11 +212,17 @@ def load_job(path: str | Path) -> Job:
         time_mean=root.table("time").choice("mean", TIME_MEANS, default="climate"),
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
-        folder=_output_folder(root.table("output"), folder, path.stem),
+        uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
+        ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
+        **_output(root.table("output"), folder, path.stem),
     )
+    root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
-    problems.raise_if_any()
-    return job
+    paths = [one.path for one in job.layers.values()]
+    paths += [job.regions.path, job.regions.id] if job.regions is not None else []
+    lithology = job.layers.get("lithology")
+    enough = all(paths) and lithology is not None and bool(lithology.legend)
+    return (job if enough else None), problems
 
 
 def _absolute(text: str, folder: Path, table: _Table) -> str:
@@ -199,9 +246,12 @@ def _grid_spec(table: _Table) -> GridSpec:
     crs = table.optional_text("crs")
     resolution = table.numbers("resolution", None, "0.1")
     bounds = table.numbers("bounds", 4, "[left, bottom, right, top]")
-    if resolution is not None and (len(resolution) > 2 or min(resolution) <= 0):
+    if resolution is not None and not _is_resolution(resolution):
         table.wrong("resolution", "one or two positive numbers", "resolution = 0.1")
         resolution = None
+    if bounds is not None and not all(math.isfinite(one) for one in bounds):
+        table.wrong("bounds", "four finite numbers", "bounds = [-10, 40, 5, 50]")
+        bounds = None
     if bounds is not None and not (bounds[0] < bounds[2] and bounds[1] < bounds[3]):
         table.wrong("bounds", "left < right and bottom < top", "bounds = [-10, 40, 5, 50]")
         bounds = None
@@ -211,6 +261,11 @@ def _grid_spec(table: _Table) -> GridSpec:
         resolution=None if resolution is None else (resolution[0], resolution[-1]),
         bounds=None if bounds is None else (bounds[0], bounds[1], bounds[2], bounds[3]),
     )
+
+
+def _is_resolution(numbers: tuple[float, ...]) -> bool:
+    good = all(math.isfinite(one) and one > 0 for one in numbers)
+    return good and len(numbers) in (1, 2)
 
 
 def _layer_specs(table: _Table, folder: Path) -> dict[str, LayerSpec]:
@@ -250,17 +305,20 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
             column=table.optional_text("column"),
             unknown=table.choice("unknown", ("error", "nodata"), default="error"),
         )
-    vegetation: dict[str, Any] = {}
+    own: dict[str, Any] = {}
     if name == "vegetation":
-        vegetation["kind"] = table.choice("kind", VEGETATION_KINDS, default="cover")
+        own["kind"] = table.choice("kind", VEGETATION_KINDS, default="cover")
         for key, default in (("bare", 0.05), ("dense", 0.86)):
             value = table.number(key)
-            vegetation[key] = default if value is None else value
-        if vegetation["bare"] >= vegetation["dense"]:
+            own[key] = default if value is None else value
+        if own["bare"] >= own["dense"]:
             table.wrong("bare", "bare below dense", "bare = 0.05 and dense = 0.86")
+    if name == "temperature":
+        own["downscale"] = table.choice("downscale", DOWNSCALING, default="none")
+        own["lapse_rate"] = table.number("lapse_rate")
     return LayerSpec(
         **common,
-        **vegetation,
+        **own,
         units=table.optional_text("units"),
         years=_years(table),
         scale=table.number("scale"),
@@ -334,10 +392,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
         return ParameterSpec(value=parent.number(name))
     table = parent.table(name)
     value = table.number("value")
-    sd = table.number("sd")
-    if sd is not None and sd < 0:
-        table.wrong("sd", "a spread of zero or more", "sd = 8.0")
-        sd = None
+    spread = spread_of(table, default="normal")
+    per_rock = table.flag("per_rock")
     rocks = table.table("by_rock")
     for rock in rocks.values:
         if rock not in ROCK_NAMES:
@@ -347,7 +403,8 @@ def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:
     return ParameterSpec(
         value=value,
         by_rock={key: one for key, one in values.items() if one is not None},
-        spread=None if sd is None else Spread(kind="normal", sd=sd),
+        spread=spread,
+        per_rock=per_rock,
     )
 
 
@@ -361,6 +418,8 @@ def _regions_spec(table: _Table, folder: Path) -> RegionsSpec:
     )
 
 
-def _output_folder(table: _Table, folder: Path, stem: str) -> str:
+def _output(table: _Table, folder: Path, stem: str) -> dict[str, Any]:
     text = table.text("folder", default=f"out/{stem}")
-    return _absolute(text, folder, table)
+    write = table.choices("write", WRITTEN, default=WRITTEN)
+    also = table.choices("also", ALSO, default=())
+    return {"folder": _absolute(text, folder, table), "write": (*write, *also)}

@@ -5,6 +5,8 @@ from __future__ import annotations
 import json
 import os
 import shutil
+import socket
+import threading
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -40,7 +42,9 @@ class Journal:
     def save(self, index: int, arrays: Mapping[str, NDArray[Any]]) -> None:
         """Write one block under a temporary name and rename it."""
         final = self.block(index)
-        temporary = final.with_name(f".{os.getpid()}-{final.name}")
+        temporary = final.with_name(
+            f".{socket.gethostname()}-{os.getpid()}-{threading.get_ident()}-{final.name}"
+        )
         try:
             with temporary.open("wb") as stream:
                 np.savez(stream, allow_pickle=False, **arrays)

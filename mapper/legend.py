@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import csv
 import difflib
+import io
+import math
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -47,24 +49,18 @@ def read_legend(path: str, *, where: str) -> Legend:
             f"there is no legend {file.name!r}", where=where, fix="a CSV with columns code,rock"
         )
     problems = Problems()
-    with file.open(encoding="utf-8-sig", newline="") as stream:
-        reader = csv.DictReader(stream)
-        missing = [name for name in ("code", "rock") if name not in (reader.fieldnames or ())]
-        if missing:
-            raise LegendError(
-                f"the legend has columns {reader.fieldnames}, and {missing[0]!r} is missing",
-                where=path,
-                fix="a first line code,rock (and share for mixed classes)",
-            )
-        rows = list(enumerate(reader, start=2))
     mixtures: dict[str, list[tuple[str, float]]] = {}
-    for line, row in rows:
+    spoilt: set[str] = set()
+    for line, row in _read_rows(file):
+        code = normal_code(row["code"] or "")
+        n_before = len(problems.found)
         with problems.gather():
-            code = normal_code(row["code"] or "")
             mixtures.setdefault(code, []).append(_entry(row, f"{path}, line {line}"))
+        if len(problems.found) > n_before:
+            spoilt.add(code)
     for code, mixture in mixtures.items():
         total = sum(share for _, share in mixture)
-        if abs(total - 1.0) > SHARE_TOLERANCE:
+        if abs(total - 1.0) > SHARE_TOLERANCE and code not in spoilt:
             problems.add(
                 LegendError(
                     f"the shares of code {code!r} add up to {total:g}",
@@ -76,6 +72,27 @@ def read_legend(path: str, *, where: str) -> Legend:
     return Legend(path, {code: tuple(mixture) for code, mixture in mixtures.items()})
 
 
+def _read_rows(file: Path) -> list[tuple[int, dict[str, str | None]]]:
+    """The lines of a legend below its first, with their numbers."""
+    try:
+        text = file.read_text(encoding="utf-8-sig")
+    except UnicodeDecodeError as cause:
+        raise LegendError(
+            f"the legend is not UTF-8 text (byte {cause.start})",
+            where=str(file),
+            fix="save it as UTF-8",
+        ) from cause
+    reader = csv.DictReader(io.StringIO(text, newline=""))
+    missing = [name for name in ("code", "rock") if name not in (reader.fieldnames or ())]
+    if missing:
+        raise LegendError(
+            f"the legend has columns {reader.fieldnames}, and {missing[0]!r} is missing",
+            where=str(file),
+            fix="a first line code,rock (and share for mixed classes)",
+        )
+    return list(enumerate(reader, start=2))
+
+
 def normal_code(text: str) -> str:
     """Spell whole numbers one way, so that "7.0", "07" and 7 are one code."""
     text = text.strip()
@@ -83,7 +100,7 @@ def normal_code(text: str) -> str:
         number = float(text)
     except ValueError:
         return text
-    return str(int(number)) if number == int(number) else text
+    return str(int(number)) if math.isfinite(number) and number == int(number) else text
 
 
 def _entry(row: Mapping[str, str | None], where: str) -> tuple[str, float]:

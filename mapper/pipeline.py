@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import hashlib
 import json
 import os
 import resource
 import time
-from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
@@ -18,9 +17,18 @@ from dask.callbacks import Callback
 from numpy.typing import NDArray
 
 from mapper.accounting import to_rate
-from mapper.engine import BlockSums, Plan, evaluate_block
+from mapper.cluster import connected, finished
+from mapper.engine import BlockSums, Plan, evaluate_block_states
 from mapper.errors import RunFolderError
+from mapper.exports.contents import Contents
+from mapper.exports.doubts import (
+    describe_spread,
+    rank_totals,
+    write_ranking,
+    write_sensitivity,
+)
 from mapper.exports.files import write_csv, write_json
+from mapper.exports.handover import hand_over, list_files
 from mapper.exports.maps import MAPS, MapKind, write_map
 from mapper.exports.record import (
     CAUTIONS,
@@ -39,19 +47,46 @@ from mapper.exports.tables import (
     region_rows,
     rock_rows,
     to_totals,
+    with_intervals,
 )
-from mapper.grid import Window, blocks, parse_crs
+from mapper.grid import Grid, Window, blocks, parse_crs
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
-from mapper.planning import Sample, block_shape, make_plan, sample_layer
+from mapper.planning import (
+    BASE_MEMORY,
+    BYTES_PER_CELL,
+    DEFAULT_MEMORY,
+    Sample,
+    block_shape,
+    make_plan,
+    sample_layer,
+)
+from mapper.ranking import CLEARLY_AHEAD, Ranking
+from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
+from mapper.uncertainty.propagate import Work
+from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
 
 Progress = Callable[[str, int, int], None]
 """Told the stage, the cells done and the cells in all."""
+
+
+@dataclass(frozen=True, kw_only=True)
+class Engine:
+    """What a run works with.
+
+    ``threads``: dask threads, or processes with ``scheduler`` "local". ``scheduler``: the address
+    of a dask.distributed scheduler whose workers see the same files. ``memory``: bytes that the
+    run should stay under; it sets the size of a block.
+    """
+
+    threads: int = field(default_factory=lambda: os.cpu_count() or 1)
+    scheduler: str | None = None
+    memory: float = DEFAULT_MEMORY
 
 
 @dataclass(frozen=True)
@@ -63,6 +98,8 @@ class RunResult:
     checks: Mapping[str, float]
     seconds: float
     resumed_blocks: int
+    spread: SpreadFound | None = None
+    ranking: Ranking | None = None
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -74,7 +111,7 @@ def run(
     *,
     out: str | Path | None = None,
     fresh: bool = False,
-    threads: int | None = None,
+    engine: Engine | None = None,
     progress: Progress = _silent,
 ) -> RunResult:
     """Run a job: maps, tables and record into its folder.
@@ -84,7 +121,7 @@ def run(
     job : from `load_job`.
     out : the folder to write to; default is the job's own.
     fresh : start over where an unfinished run lies in the folder.
-    threads : dask threads; default is the number of processors.
+    engine : threads, scheduler and memory; default is all processors of this machine.
     progress : told the stage and the cells done.
 
     Raises
@@ -92,21 +129,33 @@ def run(
     MapperError and its kinds for everything a user can mend.
     """
     began = time.monotonic()
-    threads = threads or os.cpu_count() or 1
+    engine = engine or Engine()
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
-    windows = blocks(plan.grid, block_shape(plan))
+    draws = make_draws(job, plan)
+    layout = None if draws is None else draws.layout
+    windows = blocks(plan.grid, block_shape(plan, engine.threads, engine.memory))
     with _locked(folder):
         journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
-        resumed = _compute_blocks(plan, windows, journal, threads, progress)
+        resumed = _compute_blocks((plan, layout), windows, journal, engine, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
-        _write_maps(plan, windows, journal, folder, (threads, progress))
-        _write_tables(found, folder)
-        result = RunResult(folder, found, checks, time.monotonic() - began, resumed)
-        _write_record(job, plan, result)
+        _write_maps(plan, windows, journal, folder, (engine.threads, progress))
+        spread = (
+            None
+            if draws is None
+            else _run_draws(draws, plan, (journal, len(windows)), found, engine.threads)
+        )
+        ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
+        _write_tables(found, spread, ranking, folder)
+        seconds = time.monotonic() - began
+        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
+        contents = Contents(folder, plan, found, _record(job, plan, result))
+        hand_over(contents, job.write)
+        result = replace(result, seconds=time.monotonic() - began)
+        _write_record(contents, result)
         journal.clear()
     return result
 
@@ -158,23 +207,70 @@ def _lives(process: int) -> bool:
 
 
 def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
-    """What must be the same for finished blocks to be used again."""
-    described = json.dumps(describe_job(job), sort_keys=True, default=str)
+    """What must be the same for finished blocks to be used again, key by key of the job."""
+    described = {key: one for key, one in describe_job(job).items() if key not in _NO_NUMBERS}
     files = {
-        f"input {Path(path).name}": [Path(path).stat().st_size, Path(path).stat().st_mtime_ns]
-        for path in input_files(job)
-    }
+        f"the file {Path(path).name} ({at})": [
+            Path(path).stat().st_size, Path(path).stat().st_mtime_ns
+        ]
+        for at, path in enumerate(input_files(job), start=1)
+    }  # fmt: skip
     return {
-        "job": hashlib.sha256(described.encode()).hexdigest(),
-        "versions": versions(),
+        **_flat(described),
+        **{f"version of {name}": one for name, one in versions().items()},
         "blocks": [len(windows), *windows[0].shape],
         **files,
     }
 
 
-def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
+_NO_NUMBERS = ("title", "path", "folder")
+"""Keys of a job that change no number."""
+
+
+def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
+    """Nested keys as one dotted key each."""
+    found: dict[str, str] = {}
+    for key, value in described.items():
+        name = f"{before}{key}"
+        if isinstance(value, Mapping) and value:
+            found |= _flat(value, f"{name}.")
+        else:
+            found[name] = json.dumps(value, default=str)
+    return found
+
+
+def _run_draws(
+    draws: Draws, plan: Plan, blocks_of: tuple[Journal, int], found: Totals, threads: int
+) -> SpreadFound:
+    """Merge the states of the blocks and evaluate every draw on them."""
+
+    def apply(work: list[Work]) -> list[NDArray[np.float64]]:
+        tasks = [dask.delayed(one, pure=False)() for one in work]
+        return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
+
+    counts = _merge_blocks(*blocks_of)
+    return find_spread(draws, plan, counts, found.consumption, apply)
+
+
+STATES_HELD = 2_000_000
+"""Unmerged states in memory before they are merged."""
+
+
+def _merge_blocks(journal: Journal, n_blocks: int) -> StateCounts:
+    merged: list[StateCounts] = []
+    for index in range(n_blocks):
+        names = [f"state_{name}" for name in StateCounts._fields]
+        merged.append(StateCounts(*(journal.load(index, name) for name in names)))
+        if sum(part.key.size for part in merged) > STATES_HELD:
+            merged = [merge_states(merged)]
+    return merge_states(merged)
+
+
+def _work(
+    todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int
+) -> int:
     """Compute one block and save it; the task that dask runs."""
-    maps, sums = evaluate_block(plan, window)
+    maps, sums, states = evaluate_block_states(todo[0], window, todo[1])
     factor = to_rate(1.0)
     arrays: dict[str, NDArray[Any]] = {
         "map_consumption": (maps.consumption * factor).astype(np.float32),
@@ -182,6 +278,8 @@ def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
         "map_flags": maps.flags,
     }
     arrays |= {f"sum_{name}": values for name, values in sums._asdict().items()}
+    if states is not None:
+        arrays |= {f"state_{name}": values for name, values in states._asdict().items()}
     journal.save(index, arrays)
     return window.n_cells
 
@@ -189,34 +287,50 @@ def _work(plan: Plan, window: Window, journal: Journal, index: int) -> int:
 class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
     """Counts the cells of finished tasks."""
 
-    def __init__(self, start: int, total: int, progress: Progress) -> None:
+    def __init__(self, stage: str, start: int, total: int, progress: Progress) -> None:
         super().__init__(posttask=self._count)
+        self.stage = stage
         self.done = start
         self.total = total
         self.progress = progress
 
     def _count(self, key: Any, value: Any, *_: Any) -> None:
-        if isinstance(value, int) and "block" in str(key):
+        if isinstance(value, int) and str(key).startswith(self.stage[:-1]):
             self.done += value
-            self.progress("blocks", self.done, self.total)
+            self.progress(self.stage, self.done, self.total)
 
 
 def _compute_blocks(
-    plan: Plan, windows: list[Window], journal: Journal, threads: int, progress: Progress
+    what: tuple[Plan, StateLayout | None],
+    windows: list[Window],
+    journal: Journal,
+    engine: Engine,
+    progress: Progress,
 ) -> int:
     """Run the block tasks that are not finished; says how many were."""
     todo = [index for index in range(len(windows)) if not journal.is_done(index)]
     total = sum(window.n_cells for window in windows)
     start = total - sum(windows[index].n_cells for index in todo)
     progress("blocks", start, total)
-    shared = dask.delayed(plan, name="plan", traverse=False)
+    if engine.scheduler is not None:
+        with connected(engine.scheduler, engine.threads) as client:
+            what_there = client.scatter(what, broadcast=True)
+            futures = [
+                client.submit(_work, what_there, windows[index], journal, index, pure=False)
+                for index in todo
+            ]
+            for cells in finished(futures):
+                start += cells
+                progress("blocks", start, total)
+        return len(windows) - len(todo)
+    shared = dask.delayed(what, name="plan", traverse=False)
     task = dask.delayed(_work, pure=False)
     tasks = [
         task(shared, windows[index], journal, index, dask_key_name=f"block-{index}")
         for index in todo
     ]
-    with _Watch(start, total, progress):
-        dask.compute(*tasks, scheduler="threads", num_workers=threads)
+    with _Watch("blocks", start, total, progress):
+        dask.compute(*tasks, scheduler="threads", num_workers=engine.threads)
     return len(windows) - len(todo)
 
 
@@ -249,30 +363,43 @@ def _write_maps(
 ) -> None:
     threads, progress = how
     total = plan.grid.n_cells * len(MAPS)
-    done = 0
-
-    def step(cells: int) -> None:
-        nonlocal done
-        done += cells
-        progress("maps", done, total)
-
-    def pieces(kind: MapKind) -> Iterator[tuple[Window, NDArray[Any]]]:
-        for index, window in enumerate(windows):
-            yield window, journal.load(index, f"map_{kind.name}")
-
+    progress("maps", 0, total)
     (folder / "maps").mkdir(exist_ok=True)
-    for kind in MAPS:
-        write_map(folder / "maps", kind, plan.grid, pieces(kind), threads=threads, step=step)
+    task = dask.delayed(_write_one_map, pure=False, traverse=False)
+    tasks = [
+        task(folder, kind, plan.grid, windows, journal, dask_key_name=f"map-{kind.name}")
+        for kind in MAPS
+    ]
+    with _Watch("maps", 0, total, progress):
+        dask.compute(*tasks, scheduler="threads", num_workers=threads)
 
 
-def _write_tables(found: Totals, folder: Path) -> None:
-    write_csv(folder / "tables" / "regions.csv", REGION_COLUMNS, region_rows(found))
-    write_csv(folder / "tables" / "regions_by_rock.csv", ROCK_COLUMNS, rock_rows(found))
+def _write_one_map(
+    folder: Path, kind: MapKind, grid: Grid, windows: list[Window], journal: Journal
+) -> int:
+    pieces = (
+        (window, journal.load(index, f"map_{kind.name}")) for index, window in enumerate(windows)
+    )
+    return write_map(folder / "maps", kind, grid, pieces, threads=2)
 
 
-def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
+def _write_tables(
+    found: Totals, spread: SpreadFound | None, ranking: Ranking | None, folder: Path
+) -> None:
+    intervals = None if spread is None else spread.intervals
+    names = with_intervals if spread is not None else tuple
+    tables = folder / "tables"
+    write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
+    write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
+    if spread is not None:
+        write_sensitivity(tables / "sensitivity.csv", spread)
+    if ranking is not None:
+        write_ranking(tables / "ranking.csv", ranking, drawn=spread is not None)
+
+
+def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
     found = result.totals
-    record = {
+    return {
         "title": job.title,
         "cautions": list(CAUTIONS),
         "result": {
@@ -282,15 +409,36 @@ def _write_record(job: Job, plan: Plan, result: RunResult) -> None:
             "area_under_flag_km2": found.flagged,
         },
         "checks": dict(result.checks),
+        **_describe_doubts(job, result),
         "job": describe_job(job),
         **describe_plan(plan),
         "inputs": describe_inputs(job),
         "versions": versions(),
         "constants": constants(),
+    }
+
+
+def _write_record(contents: Contents, result: RunResult) -> None:
+    record = {
+        **contents.record,
+        "files": list_files(contents),
         "seconds": round(result.seconds, 3),
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
+    """What the record says of draws and ranking, where the job asks for them."""
+    described: dict[str, Any] = {}
+    if job.uncertainty is not None and result.spread is not None:
+        described["uncertainty"] = describe_spread(job.uncertainty, result.spread)
+    if result.ranking is not None:
+        described["ranking"] = {
+            "left_out": dict(result.ranking.left_out),
+            "told_apart_from": CLEARLY_AHEAD,
+        }
+    return described
 
 
 def _plain(value: Any) -> Any:
@@ -339,7 +487,6 @@ class Inspection:
 
 
 SECONDS_PER_MILLION_CELLS = 0.6  # on one processor, measured on the island; a rough guide only
-BYTES_PER_BLOCK_CELL = 330  # arrays alive at once while a block is evaluated, measured
 
 
 def inspect(job: Job) -> Inspection:
@@ -350,6 +497,7 @@ def inspect(job: Job) -> Inspection:
     MapperError, or ManyProblemsError with every problem that can be found before the run.
     """
     plan = make_plan(job)
+    make_draws(job, plan)  # refuses spreads that cannot be drawn
     samples = {name: sample_layer(layer) for name, layer in plan.layers.items()}
     return Inspection(job, plan, samples)
 
@@ -403,7 +551,7 @@ def _region_line(plan: Plan) -> str:
 def _cost_line(n_cells: int, n_blocks: int, shape: tuple[int, int]) -> str:
     threads = os.cpu_count() or 1
     seconds = 2 + n_cells / 1e6 * SECONDS_PER_MILLION_CELLS / threads
-    memory = 300 + shape[0] * shape[1] * BYTES_PER_BLOCK_CELL * threads / 1e6
+    memory = (BASE_MEMORY + shape[0] * shape[1] * BYTES_PER_CELL * threads) / 1e6
     disk = n_cells * 18 / 1e6
     return (
         f"cost        {n_blocks} blocks; about {seconds:.0f} s on {threads} processors, "

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from pathlib import Path
 
 import numpy as np
 from numpy.typing import NDArray
@@ -13,7 +14,8 @@ from mapper.coverage import polygons_on
 from mapper.engine import Plan, evaluate_block
 from mapper.errors import GridError, JobError, MapperError, Problems
 from mapper.grid import Grid, Window, blocks, cell_areas, parse_crs, same_crs
-from mapper.job import GridSpec, Job, LayerSpec
+from mapper.job import GridSpec, Job, LayerSpec, read_job
+from mapper.layers.lapse import with_lapse
 from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
 from mapper.layers.lithology import Lithology, unknown_codes
 from mapper.layers.oddities import odd_values
@@ -31,7 +33,11 @@ from mapper.legend import Legend, normal_code, read_legend
 from mapper.regions import Regions, open_regions
 from mapper.scheme import Scheme, build_scheme
 
-BLOCK_CELLS = 2**20
+LARGEST_SIDE = 1024
+SMALLEST_SIDE = 128
+DEFAULT_MEMORY = 2e9
+BASE_MEMORY = 6e8  # the libraries, GDAL's cache and the assembly of maps, measured
+BYTES_PER_CELL = 400.0  # arrays alive at once while a block is evaluated, measured
 MOST_SAMPLED_CELLS = 2**22
 SAMPLE_SIDE = 256
 
@@ -44,6 +50,23 @@ class Sample:
     median: float
     high: float
     coverage: float
+
+
+def open_job(path: str | Path) -> Job:
+    """Read a job file; where it has problems, look for those of the files that it names too.
+
+    Raises
+    ------
+    MapperError, or ManyProblemsError with every problem that can be found before the run.
+    """
+    job, problems = read_job(path)
+    if job is not None and problems.found:
+        with problems.gather():
+            make_plan(job)
+    problems.raise_if_any()
+    if job is None:  # pragma: no cover - then there was a problem
+        raise AssertionError
+    return job
 
 
 def make_plan(job: Job) -> Plan:
@@ -191,8 +214,8 @@ def _check_layers(job: Job, scheme: Scheme) -> None:
 
 def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
     spec = job.grid
-    if spec.resolution is not None:
-        return _spelled_grid(spec, job)
+    if spec.resolution is not None or spec.crs is not None:
+        return _once_round(_spelled_grid(spec, job), job)
     if not sources and spec.take_from is None:
         raise JobError(
             "no layer is a grid, so the job's grid must be spelled out",
@@ -212,10 +235,25 @@ def _choose_grid(job: Job, sources: Mapping[str, Source]) -> Grid | None:
             where=f"{job.path}, grid",
             fix="[grid] from = another layer, or crs, resolution and bounds",
         )
-    return _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+    grid = _cut(source_grid(sources[name], where=job.layers[name].where), spec.bounds, job)
+    return _once_round(grid, job)
+
+
+def _once_round(grid: Grid, job: Job) -> Grid:
+    """The grid itself; refuses one that goes round the earth more than once."""
+    width = grid.dx * grid.n_cols
+    if grid.is_geographic and width > 360.0 * (1 + 1e-9):
+        raise GridError(
+            f"the grid spans {width:g} degrees of longitude: ground would count twice",
+            where=f"{job.path}, grid",
+            fix="[grid] bounds of at most 360 degrees",
+        )
+    return grid
 
 
 def _finest(sources: Mapping[str, Source]) -> str:
+    if not sources:
+        return "lithology"
     geographic = {name: bool(parse_crs(one.crs).is_geographic) for name, one in sources.items()}
     return min(
         sources, key=lambda name: sources[name].x.step * (1 if not geographic[name] else 1e5)
@@ -231,7 +269,15 @@ def _spelled_grid(spec: GridSpec, job: Job) -> Grid:
         )
     left, bottom, right, top = spec.bounds
     dx, dy = spec.resolution
-    n_cols, n_rows = max(1, round((right - left) / dx)), max(1, round((top - bottom) / dy))
+    n_cols, n_rows = round((right - left) / dx), round((top - bottom) / dy)
+    off = max(abs((right - left) / dx - n_cols), abs((top - bottom) / dy - n_rows))
+    if off > 1e-6 * max(n_cols, n_rows, 1) or not n_cols or not n_rows:
+        raise GridError(
+            f"bounds {list(spec.bounds)} do not hold a whole number of cells of {dx:g} x {dy:g}",
+            where=f"{job.path}, grid.bounds",
+            fix=f"bounds = [{left:g}, {top - dy * max(n_rows, 1):g}, "
+            f"{left + dx * max(n_cols, 1):g}, {top:g}]",
+        )
     return Grid(parse_crs(spec.crs).to_wkt(), left, top, dx, dy, n_rows, n_cols)
 
 
@@ -268,6 +314,9 @@ def _open_layers(
             continue
         with problems.gather():
             layers[name] = open_layer(job.layers[name], source, grid)
+    if "temperature" in layers and job.layers["temperature"].downscale == "lapse-rate":
+        with problems.gather():
+            layers["temperature"] = with_lapse(layers["temperature"], layers, sources)
     return layers
 
 
@@ -381,8 +430,13 @@ def sample_layer(layer: Layer) -> Sample:
     )
 
 
-def block_shape(plan: Plan) -> tuple[int, int]:
-    """Rows and columns of a block: squares, or bands where the largest file lies in strips."""
+def block_shape(plan: Plan, threads: int = 2, memory: float = DEFAULT_MEMORY) -> tuple[int, int]:
+    """Rows and columns of a block: squares, or bands where the largest file lies in strips.
+
+    As many cells as the memory holds for all threads together, up to `LARGEST_SIDE` squared.
+    """
+    room = max(memory - BASE_MEMORY, 0.0) / (threads * BYTES_PER_CELL)
+    side = int(np.clip(2.0 ** np.floor(np.log2(max(room, 1.0)) / 2), SMALLEST_SIDE, LARGEST_SIDE))
     sources = [layer.source for layer in plan.layers.values()]
     if plan.lithology.source is not None:
         sources.append(plan.lithology.source)
@@ -390,5 +444,5 @@ def block_shape(plan: Plan) -> tuple[int, int]:
     grid = plan.grid
     strips = largest.block[1] >= largest.x.size and largest.x.size > 1024
     if strips and largest.block[0] < 1024:
-        return max(1, min(grid.n_rows, BLOCK_CELLS // grid.n_cols)), grid.n_cols
-    return min(grid.n_rows, 1024), min(grid.n_cols, 1024)
+        return max(1, min(grid.n_rows, side**2 // grid.n_cols)), grid.n_cols
+    return min(grid.n_rows, side), min(grid.n_cols, side)

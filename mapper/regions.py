@@ -11,14 +11,7 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
-from mapper.coverage import (
-    MIXED,
-    NONE,
-    OVERLAP_TOLERANCE,
-    Polygons,
-    cover_window,
-    polygons_on,
-)
+from mapper.coverage import MIXED, NONE, OVERLAP_TOLERANCE, Polygons, cover_window, polygons_on
 from mapper.errors import Problems, RegionError
 from mapper.grid import Grid, Window, same_crs
 from mapper.job import RegionsSpec
@@ -124,7 +117,7 @@ def _names(values: tuple[Any, ...], spec: RegionsSpec, where: str) -> tuple[str,
                 fix="an id for every region",
             )
         )
-    names = tuple(_name(one) for one in values)
+    names = tuple("" if is_missing(one) else _name(one) for one in values)
     twice = [name for name, count in Counter(names).items() if count > 1]
     if twice and not empty:
         problems.add(
@@ -148,7 +141,7 @@ def _names(values: tuple[Any, ...], spec: RegionsSpec, where: str) -> tuple[str,
 
 
 def _name(value: Any) -> str:
-    if isinstance(value, float | np.floating) and value.is_integer():
+    if isinstance(value, float | np.floating) and float(value).is_integer():
         return str(int(value))
     return str(value)
 

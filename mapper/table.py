@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import json
 import math
 import tomllib
 from collections.abc import Mapping
@@ -109,6 +110,20 @@ class Table:
             return default
         return value
 
+    def choices(
+        self, key: str, among: tuple[str, ...], *, default: tuple[str, ...]
+    ) -> tuple[str, ...]:
+        """Several of several words."""
+        value = self._take(key)
+        if value is None:
+            return default
+        listed = value if isinstance(value, list) else [value]
+        if any(one not in among for one in listed):
+            needed = "a list of " + ", ".join(among)
+            self.wrong(key, needed, f"{key} = {json.dumps(list(among))}")
+            return default
+        return tuple(listed)
+
     def number(self, key: str) -> float | None:
         """A finite number, or None."""
         value = self._take(key)
@@ -121,6 +136,24 @@ class Table:
             self.wrong(key, "a finite number", f"{key} = 1.0")
             return None
         return float(value)
+
+    def flag(self, key: str) -> bool | None:
+        """True or false, or None."""
+        value = self._take(key)
+        if value is None or isinstance(value, bool):
+            return value
+        self.wrong(key, "true or false", f"{key} = true")
+        return None
+
+    def whole(self, key: str, *, default: int, least: int) -> int:
+        """A whole number of ``least`` or more."""
+        value = self._take(key)
+        if value is None:
+            return default
+        if isinstance(value, bool) or not isinstance(value, int) or value < least:
+            self.wrong(key, f"a whole number of {least} or more", f"{key} = {max(default, least)}")
+            return default
+        return value
 
     def numbers(self, key: str, count: int | None, example: str) -> tuple[float, ...] | None:
         """A list of numbers, or None."""

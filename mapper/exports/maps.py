@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
+import math
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import rasterio
 from numpy.typing import NDArray
 from rasterio.shutil import copy as copy_raster
@@ -44,7 +46,6 @@ MAPS: tuple[MapKind, ...] = (
         description="CO2 taken up by weathering, short term",
         overviews="AVERAGE",
         tags={
-            "standard_name": "",
             "long_name": "CO2 taken from air and soil by rock weathering, short term, over the "
             "whole cell",
             "caution": _CAUTION,
@@ -82,25 +83,24 @@ def write_map(
     pieces: Iterable[tuple[Window, NDArray[Any]]],
     *,
     threads: int,
-    step: Callable[[int], None],
-) -> Path:
-    """Write one map as COG.
+) -> int:
+    """Write one map as COG; returns its number of cells.
 
     Parameters
     ----------
     pieces : windows and their values, which together fill the grid.
-    step : told the number of cells after each piece.
+    threads : how many compress at one time.
     """
     final = folder / f"{kind.name}.tif"
     plain = folder / f".part-plain-{kind.name}.tif"
     try:
         with whole_file(plain) as temporary:
-            _write_plain(temporary, kind, grid, pieces, step)
+            _write_plain(temporary, kind, grid, pieces)
         with whole_file(final) as temporary:
             copy_raster(plain, temporary, **_cog_options(kind, threads))
     finally:
         plain.unlink(missing_ok=True)
-    return final
+    return grid.n_cells
 
 
 def _write_plain(
@@ -108,8 +108,8 @@ def _write_plain(
     kind: MapKind,
     grid: Grid,
     pieces: Iterable[tuple[Window, NDArray[Any]]],
-    step: Callable[[int], None],
 ) -> None:
+    statistics = Statistics()
     profile: dict[str, Any] = {
         "driver": "GTiff",
         "width": grid.n_cols,
@@ -127,12 +127,52 @@ def _write_plain(
     with rasterio.open(path, "w", **profile) as dataset:
         dataset.set_band_description(1, kind.description)
         dataset.units = (kind.unit,)
-        dataset.update_tags(**{key: text for key, text in kind.tags.items() if text})
+        dataset.update_tags(**kind.tags)
         dataset.update_tags(1, units=kind.unit)
         for window, values in pieces:
             at = RasterWindow(window.col, window.row, window.n_cols, window.n_rows)
             dataset.write(values, 1, window=at)
-            step(window.n_cells)
+            if kind.nodata is not None:
+                statistics.add(values)
+        dataset.update_tags(1, **statistics.tags())
+
+
+@dataclass
+class Statistics:
+    """A map's statistics, gathered piece by piece, under the names that GDAL reads.
+
+    Mean and standard deviation are given with six digits, so that the order of the pieces does
+    not show.
+    """
+
+    cells: int = 0
+    low: float = math.inf
+    high: float = -math.inf
+    sums: list[tuple[int, float, float]] = field(default_factory=list)
+
+    def add(self, values: NDArray[Any]) -> None:
+        """Count in one piece; NaN is no data."""
+        self.cells += values.size
+        held = values[~np.isnan(values)].astype(np.float64)
+        if held.size:
+            self.low = min(self.low, float(held.min()))
+            self.high = max(self.high, float(held.max()))
+            self.sums.append((held.size, float(held.sum()), float(np.dot(held, held))))
+
+    def tags(self) -> dict[str, str]:
+        """The statistics as tags of a band; none where there is no data."""
+        if not self.sums:
+            return {}
+        count = sum(one[0] for one in self.sums)
+        mean = math.fsum(one[1] for one in self.sums) / count
+        square = math.fsum(one[2] for one in self.sums) / count
+        return {
+            "STATISTICS_MINIMUM": f"{self.low:.9g}",
+            "STATISTICS_MAXIMUM": f"{self.high:.9g}",
+            "STATISTICS_MEAN": f"{mean:.6g}",
+            "STATISTICS_STDDEV": f"{math.sqrt(max(square - mean**2, 0.0)):.6g}",
+            "STATISTICS_VALID_PERCENT": f"{100.0 * count / self.cells:.4g}",
+        }
 
 
 def _cog_options(kind: MapKind, threads: int) -> dict[str, Any]:
@@ -145,5 +185,4 @@ def _cog_options(kind: MapKind, threads: int) -> dict[str, Any]:
         "overview_resampling": kind.overviews,
         "num_threads": threads,
         "bigtiff": "IF_SAFER",
-        "statistics": "YES" if kind.nodata is not None else "NO",
     }

@@ -8,10 +8,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.accounting import SQUARE_METRES_PER_KM2, tonnes_per_mole
+from mapper.accounting import SQUARE_METRES_PER_KM2, to_rate, tonnes_per_mole
 from mapper.engine import KEPT, OUTSIDE_RANGE, BlockSums, Flag
 from mapper.rocks import ROCK_NAMES
 from mapper.sums import totals
+from mapper.uncertainty.intervals import LEVEL_NAMES, LEVELS, Intervals
 
 Floats = NDArray[np.float64]
 
@@ -26,6 +27,8 @@ REGION_COLUMNS = (
     "outside_law_range_km2",
 )
 ROCK_COLUMNS = ("region", "rock", *REGION_COLUMNS[1:])
+DRAWN_COLUMNS = REGION_COLUMNS[3:7]
+"""Columns that a run with draws gives with their intervals."""
 UNMAPPED = "unmapped"
 
 
@@ -74,60 +77,99 @@ def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
     )
 
 
-def region_rows(found: Totals) -> list[list[Any]]:
+def with_intervals(columns: tuple[str, ...]) -> tuple[str, ...]:
+    """The columns of a run with draws: each quantity followed by its interval.
+
+    Examples
+    --------
+    >>> with_intervals(("region", "drawdown_t_per_yr"))[2:]
+    ('drawdown_t_per_yr_p05', 'drawdown_t_per_yr_p50', 'drawdown_t_per_yr_p95')
+    """
+    wide: list[str] = []
+    for one in columns:
+        wide.append(one)
+        if one in DRAWN_COLUMNS:
+            wide.extend(f"{one}_{level}" for level in LEVEL_NAMES)
+    return tuple(wide)
+
+
+def region_rows(found: Totals, intervals: Intervals | None = None) -> list[list[Any]]:
     """Rows of ``regions.csv``: each region, then 'outside', then 'all'."""
-    rows = [_row([name], found.area[at], found, np.s_[at]) for at, name in enumerate(found.names)]
-    return [*rows, _row(["all"], found.area.sum(), found, np.s_[:])]
+    rows = []
+    for at, name in enumerate(found.names):
+        spread = None if intervals is None else intervals.regions[:, at]
+        rows.append(_row([name], found.area[at], found, np.s_[at], spread))
+    spread = None if intervals is None else intervals.everything
+    return [*rows, _row(["all"], found.area.sum(), found, np.s_[:], spread)]
 
 
-def _row(labels: list[str], area: float, found: Totals, part: Any) -> list[Any]:
+def _row(
+    labels: list[str], area: float, found: Totals, part: Any, spread: Floats | None
+) -> list[Any]:
+    """One row; ``spread`` (2, 3) holds the intervals of consumption and drawdown."""
     valid = float(found.valid_area[part].sum())
-    consumption = float(found.consumption[part].sum())
-    drawdown = float(found.drawdown[part].sum())
-    return [
-        *labels,
-        float(area),
-        valid,
-        consumption,
-        drawdown,
-        consumption / valid if valid else float("nan"),
-        drawdown / valid if valid else float("nan"),
-        float(found.outside_range[part].sum()),
-    ]
+    amounts = [float(found.consumption[part].sum()), float(found.drawdown[part].sum())]
+    cells: list[Any] = [*labels, float(area), valid]
+    for divisor in (1.0, valid):
+        for at, amount in enumerate(amounts):
+            several = [] if spread is None else [float(one) for one in spread[at]]
+            cells += [_over(one, divisor) for one in (amount, *several)]
+    return [*cells, float(found.outside_range[part].sum())]
 
 
-def rock_rows(found: Totals) -> list[list[Any]]:
+def _over(amount: float, divisor: float) -> float:
+    return amount / divisor if divisor else float("nan")
+
+
+def rock_rows(found: Totals, intervals: Intervals | None = None) -> list[list[Any]]:
     """Rows of ``regions_by_rock.csv``: each region's rocks, what is unmapped, and their sum."""
     rows: list[list[Any]] = []
     for at, name in enumerate(found.names):
-        rows.extend(_rocks_of(name, float(found.area[at]), found, np.s_[at : at + 1]))
-    rows.extend(_rocks_of("all", float(found.area.sum()), found, np.s_[:]))
+        spreads = None if intervals is None else (intervals.pairs[:, at], intervals.regions[:, at])
+        rows.extend(_rocks_of(name, float(found.area[at]), found, np.s_[at : at + 1], spreads))
+    spreads = None if intervals is None else (intervals.rocks, intervals.everything)
+    rows.extend(_rocks_of("all", float(found.area.sum()), found, np.s_[:], spreads))
     return rows
 
 
-def _rocks_of(name: str, area: float, found: Totals, part: Any) -> list[list[Any]]:
-    rows = [
-        _row([name, rock], found.rock_area[part, at].sum(), found, (part, at))
-        for at, rock in enumerate(ROCK_NAMES)
-        if found.rock_area[part, at].sum() > 0
-    ]
+def _rocks_of(
+    name: str, area: float, found: Totals, part: Any, spreads: tuple[Floats, Floats] | None
+) -> list[list[Any]]:
+    """Rows of one region; ``spreads`` holds the intervals by rock, and of their sum."""
+    rows = []
+    for at, rock in enumerate(ROCK_NAMES):
+        if found.rock_area[part, at].sum() > 0:
+            spread = None if spreads is None else spreads[0][:, at]
+            rows.append(
+                _row([name, rock], found.rock_area[part, at].sum(), found, (part, at), spread)
+            )
     unmapped = area - float(found.rock_area[part].sum())
     if unmapped > 1e-9 * max(area, 1e-300):
-        rows.append([name, UNMAPPED, unmapped, 0.0, 0.0, 0.0, float("nan"), float("nan"), 0.0])
-    rows.append(_row([name, "all"], area, found, part))
+        each = 1 if spreads is None else 1 + len(LEVELS)
+        amounts = [0.0] * (2 * each) + [float("nan")] * (2 * each)
+        rows.append([name, UNMAPPED, unmapped, 0.0, *amounts, 0.0])
+    rows.append(_row([name, "all"], area, found, part, None if spreads is None else spreads[1]))
     return rows
+
+
+LEAST_RATE = 1e-4
+"""Rate [mol m-2 yr-1] below which sums are compared with it instead of with themselves: they are
+counted in whole units of 2^-56 mol m-2 yr-1 a cell, which is not 1e-12 of a smaller rate."""
 
 
 def closure(found: Totals) -> dict[str, float]:
     """How far the split sums lie from the cells' own, relative; the run refuses above 1e-12."""
     area, consumption, drawdown = found.cells
+    least = area * to_rate(LEAST_RATE)
     return {
         "regions_and_outside_to_all_cells_area": _apart(found.area.sum(), area),
-        "regions_and_rocks_to_all_cells_consumption": _apart(found.consumption.sum(), consumption),
-        "regions_and_rocks_to_all_cells_drawdown": _apart(found.drawdown.sum(), drawdown),
+        "regions_and_rocks_to_all_cells_consumption": _apart(
+            found.consumption.sum(), consumption, least
+        ),
+        "regions_and_rocks_to_all_cells_drawdown": _apart(found.drawdown.sum(), drawdown, least),
     }
 
 
-def _apart(one: float, other: float) -> float:
-    largest = max(abs(one), abs(other))
+def _apart(one: float, other: float, least: float = 0.0) -> float:
+    largest = max(abs(one), abs(other), least)
     return float(abs(one - other) / largest) if largest else 0.0

@@ -57,13 +57,14 @@ CONCENTRATION = Parameter(
     },
     low=0.01,
     high=5.0,
-    spread=Spread(kind="lognormal", sd=0.25),
+    spread=Spread(kind="lognormal", sd=0.25, per_rock=True),
     source=(
         "Amiotte Suchet & Probst 1993 as reproduced in Drever & Clow 1995, table 4 (read). "
         "Gabbro, gneiss and schist as plutonic and metamorphic, dolomite as carbonate rock: this "
         "project's reading. Mixed sediment (1/5 carbonate, 2/5 sandstone, 2/5 shale), alluvium "
         "(sandstone) and loess (1/11 carbonate, 10/11 sandstone) are not in the table: project. "
-        "The spread is the project's; the source gives correlations (0.71 to 0.99), no spread."
+        "The spread is the project's; the source gives correlations (0.71 to 0.99), no "
+        "spread. Each rock is drawn for itself, as each was fitted on basins of its own."
     ),
     grade="read",
 )

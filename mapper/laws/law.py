@@ -45,13 +45,15 @@ class Spread:
 
     ``normal``: ``sd`` in the parameter's unit. ``lognormal``: ``sd`` of the natural logarithm,
     the central value being the median. ``uniform`` and ``triangular``: between ``low`` and
-    ``high``, the triangle's top at the central value.
+    ``high``, the triangle's top at the central value. ``per_rock`` draws each rock for itself;
+    otherwise all rocks lie at the same quantile of their spread in a draw.
     """
 
     kind: SpreadKind
     sd: float = 0.0
     low: float = 0.0
     high: float = 0.0
+    per_rock: bool = False
 
 
 @dataclass(frozen=True, kw_only=True)

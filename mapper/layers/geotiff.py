@@ -22,7 +22,7 @@ from mapper.grid import parse_crs
 from mapper.job import LayerSpec
 from mapper.layers.axis import around_the_earth, inside_the_poles, one_turn
 from mapper.layers.damage import blocks_in, refuse_cut_file, rows_per_strip
-from mapper.layers.source import Source, north_up_axes, take
+from mapper.layers.source import Source, north_up_axes, stamp, take
 
 MOST_CELLS = 2**37
 """A global grid of 3 arc-seconds has 2**36.4 cells."""
@@ -42,8 +42,7 @@ def open_geotiff(spec: LayerSpec) -> Source:
     """
     try:
         with warnings.catch_warnings():
-            # what is not georeferenced is refused below, in our own words
-            warnings.simplefilter("ignore", NotGeoreferencedWarning)
+            warnings.simplefilter("ignore", NotGeoreferencedWarning)  # refused below, in words
             with rasterio.open(spec.path, driver="GTiff") as dataset:
                 return _describe(dataset, spec)
     except RasterioIOError as cause:
@@ -198,13 +197,8 @@ def _sidecars(spec: LayerSpec) -> tuple[str, ...]:
     return tuple(f"{name} beside it is not used" for name in found if not name.endswith(".msk"))
 
 
-def _opened(path: str) -> xr.DataArray:
-    """The open file; one that was written anew is opened anew."""
-    return _open_version(path, Path(path).stat().st_mtime_ns)
-
-
 @lru_cache(maxsize=32)
-def _open_version(path: str, _changed: int) -> xr.DataArray:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.DataArray:
     opened = rioxarray.open_rasterio(
         path, driver="GTiff", lock=False, masked=False, parse_coordinates=False, cache=False
     )
@@ -223,7 +217,7 @@ def read_window(
     rows, cols = window
     band = int(source.variable or 1)
     try:
-        raw = take(_opened(source.path)[band - 1], rows, cols)
+        raw = take(_opened(source.path, stamp(source.path))[band - 1], rows, cols)
         if not source.has_mask:
             return raw, np.ones(raw.shape, dtype=np.bool_)
         return raw, take(_Mask(source.path, band), rows, cols) != 0
@@ -266,8 +260,9 @@ class _Mask:
 
     def __getitem__(self, window: tuple[Any, slice, slice]) -> NDArray[np.uint8]:
         _, rows, cols = window
-        handles: dict[str, Any] = _local.__dict__.setdefault("handles", {})
-        if self.path not in handles:
-            handles[self.path] = rasterio.open(self.path, driver="GTiff")
+        handles: dict[tuple[str, tuple[int, int]], Any] = _local.__dict__.setdefault("handles", {})
+        key = (self.path, stamp(self.path))
+        if key not in handles:
+            handles[key] = rasterio.open(self.path, driver="GTiff")
         bounds = ((rows.start, rows.stop), (cols.start, cols.stop))
-        return np.asarray(handles[self.path].read_masks(self.band, window=bounds))
+        return np.asarray(handles[key].read_masks(self.band, window=bounds))

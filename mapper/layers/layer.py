@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Any, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,6 +21,9 @@ from mapper.layers.warp import plan_points, sample_bilinear, sample_nearest, sub
 from mapper.units import INNER_UNIT, MONTHS_PER_YEAR, Conversion, Quantity, conversion
 from mapper.vegetation import cover_from_ndvi
 
+if TYPE_CHECKING:
+    from mapper.layers.lapse import Lapse
+
 Floats = NDArray[np.float64]
 How = Literal["same", "nearest", "bilinear", "mean", "points"]
 
@@ -35,6 +38,8 @@ QUANTITY: dict[str, Quantity] = {
     "erosion": "erosion",
     "soil_co2": "pressure",
     "reference_consumption": "rate",
+    "elevation": "elevation",
+    "coarse_elevation": "elevation",
 }
 
 PLAUSIBLE: dict[str, tuple[float, float]] = {
@@ -49,6 +54,8 @@ PLAUSIBLE: dict[str, tuple[float, float]] = {
     "erosion": (0.0, 1e6),
     "soil_co2": (0.0, 1.0),
     "reference_consumption": (0.0, 100.0),
+    "elevation": (-500.0, 9_000.0),
+    "coarse_elevation": (-500.0, 9_000.0),
 }
 
 
@@ -66,6 +73,7 @@ class Layer:
     how: How
     conversion: Conversion
     points: int = 1
+    lapse: Lapse | None = None
 
     @property
     def name(self) -> str:
@@ -83,19 +91,34 @@ class Layer:
         ------
         ValuesError where values cannot be what the layer says they are.
         """
+        values = self._plain(window, month)
+        return values if self.lapse is None else self.lapse.correct(self, window, values)
+
+    def _plain(self, window: Window, month: int | None) -> Floats:
         if self.how == "points":
             return self._sampled(window, month)
-        rows, cols = axis_plans(self.source, self.grid, window, _method(self.how))
+        rows, cols = axis_plans(self.source, self.grid, window, method_of(self.how))
         values, valid = read_decoded(self, rows, cols, month)
-        if self.how == "same":
-            inside, taken = same_cells(rows), same_cells(cols)
-            if values.shape == window.shape:
-                return np.where(valid, values, np.nan)
-            whole = np.full(window.shape, np.nan)
-            part = np.where(valid, values, np.nan)[inside[1], taken[1]]
-            whole[inside[0], taken[0]] = part
-            return whole
-        return resample(rows, cols, values, valid, _method(self.how))
+        return self.arrange(window, (rows, cols), values, valid)
+
+    def arrange(
+        self,
+        window: Window,
+        plans: tuple[AxisPlan, AxisPlan],
+        values: Floats,
+        valid: NDArray[np.bool_],
+    ) -> Floats:
+        """Bring values on the source's cells onto a window, as this layer is brought there."""
+        rows, cols = plans
+        if self.how != "same":
+            return resample(rows, cols, values, valid, method_of(self.how))
+        if values.shape == window.shape:
+            return np.where(valid, values, np.nan)
+        inside, taken = same_cells(rows), same_cells(cols)
+        whole = np.full(window.shape, np.nan)
+        part = np.where(valid, values, np.nan)[inside[1], taken[1]]
+        whole[inside[0], taken[0]] = part
+        return whole
 
     def decode(self, raw: NDArray[Any], valid: NDArray[np.bool_]) -> Floats:
         """Raw values in inner units; what is not valid is left as it falls."""
@@ -150,7 +173,8 @@ def same_cells(plan: AxisPlan) -> tuple[slice, slice]:
     return slice(first, last + 1), taken
 
 
-def _method(how: How) -> Method:
+def method_of(how: How) -> Method:
+    """The way of weighing source cells that belongs to a way of coming onto the grid."""
     return "nearest" if how in ("same", "points") else how  # type: ignore[return-value]
 
 
@@ -254,13 +278,18 @@ def place(source: Source, grid: Grid, *, where: str) -> Source:
     x, y = _rim(grid, window)
     source_x, source_y = transformer(grid.crs, source.crs).transform(x, y)
     good = np.isfinite(source_x) & np.isfinite(source_y)
-    if not good.any():
+    if not good.any() or _apart(source, source_x[good], source_y[good]):
         raise _misses(source, grid, where)
-    if parse_crs(source.crs).is_geographic:
-        source = replace(
-            source, x=nearest_turn(source.x, source_x[good].min(), source_x[good].max())
-        )
     return source
+
+
+def _apart(source: Source, x: Floats, y: Floats) -> bool:
+    """Whether points of the grid, in the source's CRS, lie all on one side of the source."""
+    if y.max() <= -source.y.edges[-1] or y.min() >= -source.y.edges[0]:
+        return True
+    if parse_crs(source.crs).is_geographic:
+        return False  # round the earth there are no sides
+    return bool(x.max() <= source.x.edges[0] or x.min() >= source.x.edges[-1])
 
 
 def _rim(grid: Grid, window: Window) -> tuple[Floats, Floats]:

@@ -79,7 +79,7 @@ class Lithology:
             cover = cover_window(self.polygons, self.grid, window)
             entries = cover.entries()
             _refuse_overlap(entries, self, window)
-            return *entries, self.polygons.names
+            return *_settled(entries, window), self.polygons.names
         if self.source is None:  # pragma: no cover - one of the two is always there
             raise AssertionError
         cells, codes, shares = self._from_raster(self.source, window)
@@ -152,6 +152,14 @@ def _refuse_overlap(
         where=lithology.spec.where,
         fix="polygons that do not overlap; ground under two of them would count twice",
     )
+
+
+def _settled(entries: tuple[Ints, Ints, Floats], window: Window) -> tuple[Ints, Ints, Floats]:
+    """Shares that add up to 1 where polygons meet but for slivers."""
+    cells, codes, shares = entries
+    covered = np.bincount(cells, weights=shares, minlength=window.n_cells)
+    whole = np.abs(covered - 1.0) <= OVERLAP_TOLERANCE
+    return cells, codes, shares / np.where(whole, covered, 1.0)[cells]
 
 
 def _refuse_fractions(raw: NDArray[Any], valid: NDArray[np.bool_], spec: LayerSpec) -> None:
@@ -229,6 +237,9 @@ def _to_rocks(
 
 def _ordered(cell: Ints, rock: Ints, share: Floats) -> RockCells:
     if (cell[1:] > cell[:-1]).all():  # one rock a cell, in order already
+        keep = share > LEAST_SHARE
+        if not keep.all():
+            cell, rock, share = cell[keep], rock[keep], share[keep]
         return RockCells(cell, rock, share)
     key = cell * len(ROCK_NAMES) + rock
     order = np.argsort(key, kind="stable")

@@ -23,21 +23,16 @@ from mapper.layers.axis import (
     inside_the_poles,
     one_turn,
 )
-from mapper.layers.source import UNTAGGED_FILLS, Source, take
+from mapper.layers.source import UNTAGGED_FILLS, Source, stamp, take
 from mapper.layers.timeline import RawTime, Timeline, read_timeline
 
 _LON_LAT = "OGC:CRS84"
 
 
-def _opened(path: str) -> xr.Dataset:
-    """The open file; one that was written anew is opened anew."""
-    return _open_version(path, Path(path).stat().st_mtime_ns)
-
-
 @lru_cache(maxsize=32)
-def _open_version(path: str, _changed: int) -> xr.Dataset:
+def _opened(path: str, _stamp: tuple[int, int]) -> xr.Dataset:
     if Path(path).is_dir():
-        store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None)
+        store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None, consolidated=False)
         return store
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"
@@ -57,7 +52,7 @@ def open_netcdf(spec: LayerSpec) -> Source:
     FileFormatError, GridError, ValuesError.
     """
     try:
-        dataset = _opened(spec.path)
+        dataset = _opened(spec.path, stamp(spec.path))
     except ImportError as cause:
         raise FileFormatError(
             "Zarr needs the library zarr, which is not installed",
@@ -343,7 +338,7 @@ def read_window(
 ) -> tuple[NDArray[Any], NDArray[np.bool_]]:
     """Read raw values for one window in file order, steps in front; there is no separate mask."""
     rows, cols = window
-    dataset = _opened(source.path)
+    dataset = _opened(source.path, stamp(source.path))
     variable = dataset[source.variable]
     x_name, y_name = _dims(dataset, variable)
     others = [str(dim) for dim in variable.dims if dim not in (x_name, y_name)]

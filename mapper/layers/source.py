@@ -154,11 +154,21 @@ def _as_dtype(value: float, dtype: np.dtype[Any]) -> Any:
 
 def runs(index: NDArray[np.int64]) -> list[slice]:
     """Cut positions in a file into stretches ``low:high``, with step -1 where they run down."""
-    pieces = np.split(index, np.flatnonzero(np.abs(np.diff(index)) != 1) + 1)
+    pieces: list[NDArray[np.int64]] = []
+    for piece in np.split(index, np.flatnonzero(np.abs(np.diff(index)) != 1) + 1):
+        one_way = piece.size < 3 or bool((np.diff(piece) == piece[1] - piece[0]).all())
+        # back and forth, as round the earth on two cells: cell by cell
+        pieces.extend([piece] if one_way else np.split(piece, piece.size))
     return [
         slice(int(piece.min()), int(piece.max()) + 1, -1 if piece[-1] < piece[0] else 1)
         for piece in pieces
     ]
+
+
+def stamp(path: str) -> tuple[int, int]:
+    """Size and time of a file, so that one that was written anew is opened anew."""
+    about = Path(path).stat()
+    return about.st_size, about.st_mtime_ns
 
 
 def take(array: Any, rows: slice, cols: slice) -> NDArray[Any]:

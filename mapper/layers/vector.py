@@ -56,6 +56,8 @@ def read_vector(
             where=where,
             fix=f'"{near[0]}"' if near else "a file with attributes",
         )
+    if "geometry" not in frame.columns:
+        raise RegionError("the file holds a table without shapes", where=where, fix="polygons")
     found = crs or (frame.crs.to_wkt() if frame.crs is not None else None)
     if found is None:
         raise GridError(
@@ -79,11 +81,22 @@ def _read_frame(path: str, layer: str | None, where: str) -> Any:
         with warnings.catch_warnings():
             # GDAL's doubts about a file become an error or a result of our own
             warnings.simplefilter("ignore", RuntimeWarning)
+            _refuse_choice(path, layer, where)
             return pyogrio.read_dataframe(path, layer=layer)
     except (DataSourceError, DataLayerError) as cause:
         raise FileFormatError(
             f"the file cannot be read as vectors: {cause}", where=where, fix="copy it again"
         ) from cause
+
+
+def _refuse_choice(path: str, layer: str | None, where: str) -> None:
+    layers = [str(one) for one in pyogrio.list_layers(path)[:, 0]]
+    if layer is None and len(layers) > 1:
+        raise RegionError(
+            f"the file holds {len(layers)} layers: {', '.join(layers)}",
+            where=where,
+            fix=f'layer = "{layers[0]}"',
+        )
 
 
 def _read_parquet(path: str, where: str) -> Any:

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.grid import Grid, Window, transformer
+from mapper.grid import Grid, Window, parse_crs, transformer
 from mapper.layers.axis import Axis, AxisPlan
 from mapper.layers.resample import LEAST_COVER
 from mapper.layers.source import Source
@@ -18,6 +18,10 @@ Ints = NDArray[np.int64]
 LATTICE = 8
 """Cells between the points that PROJ transforms; bilinear between them. The lattice is anchored
 at the grid's origin, so that a point's coordinates do not depend on the window."""
+
+MOST_OFF = 0.02
+"""Source cells by which coordinates between lattice points may be off; where they are further
+off, PROJ transforms each point."""
 
 MOST_SUBDIVISIONS = 8
 
@@ -44,8 +48,10 @@ def plan_points(grid: Grid, window: Window, source: Source, points: int) -> Poin
     """Find the source cells that a window's sample points fall into; None where there are none."""
     x, y = _source_coordinates(grid, window, source, points)
     y = -y
-    if source.x.period:
-        x = source.x.edges[0] + np.mod(x - source.x.edges[0], source.x.period)
+    if _geographic(source):
+        middle = 0.5 * (source.x.edges[0] + source.x.edges[-1])
+        start = source.x.edges[0] if source.x.period else middle - 180.0
+        x = start + np.mod(x - start, 360.0)
     row, col = _index(source.y, y), _index(source.x, x)
     inside = (row >= 0) & (col >= 0)
     if not inside.any():
@@ -58,10 +64,17 @@ def plan_points(grid: Grid, window: Window, source: Source, points: int) -> Poin
 
 def subdivisions(grid: Grid, source: Source) -> int:
     """Sample points along a cell's side, so that no source cell under the grid is passed over."""
-    middle = Window(grid.n_rows // 2, grid.n_cols // 2, 1, 1)
-    x, y = _source_coordinates(grid, middle, source, 2)
-    width = max(float(np.ptp(x)) * 2 / source.x.step, float(np.ptp(y)) * 2 / source.y.step)
-    return int(np.clip(np.ceil(width), 1, MOST_SUBDIVISIONS))
+    widths = [_width(grid, source, at) for at in (0.5, 0.25, 0.75, 0.0, 1.0)]
+    known = [one for one in widths if np.isfinite(one)]
+    return int(np.clip(np.ceil(known[0] if known else 1.0), 1, MOST_SUBDIVISIONS))
+
+
+def _width(grid: Grid, source: Source, at: float) -> float:
+    """Source cells across the grid's cell at a part of its diagonal; NaN beyond a projection."""
+    cell = Window(round(at * (grid.n_rows - 1)), round(at * (grid.n_cols - 1)), 1, 1)
+    x, y = _source_coordinates(grid, cell, source, 2)
+    x = _short(x - x[0, 0], 360.0 if _geographic(source) else 0.0)
+    return max(float(np.ptp(x)) * 2 / source.x.step, float(np.ptp(y)) * 2 / source.y.step)
 
 
 def sample_nearest(plan: PointPlan, values: Floats, valid: NDArray[np.bool_]) -> Floats:
@@ -98,9 +111,13 @@ def sample_bilinear(
 
 
 def _cell_means(values: Floats, good: NDArray[np.bool_], points: int) -> Floats:
-    shape = (values.shape[0] // points, points, values.shape[1] // points, points)
-    count = good.reshape(shape).sum(axis=(1, 3))
-    total = np.where(good, values, 0.0).reshape(shape).sum(axis=(1, 3))
+    filled = np.where(good, values, 0.0)
+    shape = (values.shape[0] // points, values.shape[1] // points)
+    count, total = np.zeros(shape, dtype=np.int64), np.zeros(shape)
+    for row in range(points):  # point by point: a sum over two axes adds in an order that
+        for col in range(points):  # depends on the window's shape
+            count += good[row::points, col::points]
+            total += filled[row::points, col::points]
     out = np.full(count.shape, np.nan)
     np.divide(total, count, out=out, where=count >= LEAST_COVER * points**2)
     return out
@@ -109,23 +126,79 @@ def _cell_means(values: Floats, good: NDArray[np.bool_], points: int) -> Floats:
 def _source_coordinates(
     grid: Grid, window: Window, source: Source, points: int
 ) -> tuple[Floats, Floats]:
+    """Where the sample points of a window lie in the source's CRS.
+
+    Bilinear between the nodes of the lattice where that is true to `MOST_OFF`, as it is away
+    from poles and rims of projections; point by point in the other lattice cells.
+    """
     rows = _sub_centres(window.row, window.n_rows, points)
     cols = _sub_centres(window.col, window.n_cols, points)
-    row_node = np.floor(rows / LATTICE).astype(np.int64)
-    col_node = np.floor(cols / LATTICE).astype(np.int64)
-    node_rows = np.arange(row_node[0], row_node[-1] + 2) * float(LATTICE)
-    node_cols = np.arange(col_node[0], col_node[-1] + 2) * float(LATTICE)
-    x, y = np.meshgrid(grid.left + grid.dx * node_cols, grid.top - grid.dy * node_rows)
-    source_x, source_y = transformer(grid.crs, source.crs).transform(x, y)
-    at = (row_node - row_node[0], col_node - col_node[0])
-    share = (rows / LATTICE - row_node, cols / LATTICE - col_node)
-    turn = 360.0 if source.x.period or _geographic(source) else 0.0
-    return _between_nodes(source_x, at, share, turn), _between_nodes(source_y, at, share, 0.0)
+    lattice = _Lattice(grid, source, rows, cols)
+    with np.errstate(invalid="ignore", over="ignore"):  # beyond a projection PROJ gives infinity
+        x, y = lattice.between(rows, cols)
+        rough = lattice.rough()
+    at_row, at_col = np.nonzero(rough[np.ix_(lattice.cell(rows, 0), lattice.cell(cols, 1))])
+    if at_row.size:
+        x[at_row, at_col], y[at_row, at_col] = transformer(grid.crs, source.crs).transform(
+            grid.left + grid.dx * cols[at_col], grid.top - grid.dy * rows[at_row]
+        )
+    return np.where(np.isfinite(x), x, np.nan), np.where(np.isfinite(y), y, np.nan)
+
+
+class _Lattice:
+    """Nodes of the lattice around a window, in the source's CRS."""
+
+    def __init__(self, grid: Grid, source: Source, rows: Floats, cols: Floats) -> None:
+        self.grid = grid
+        self.source = source
+        self.turn = 360.0 if _geographic(source) else 0.0
+        self.first = (int(rows[0] // LATTICE), int(cols[0] // LATTICE))
+        self.count = (
+            int(rows[-1] // LATTICE) - self.first[0] + 1,
+            int(cols[-1] // LATTICE) - self.first[1] + 1,
+        )
+        nodes = [(one + np.arange(n + 1, dtype=np.float64)) * LATTICE for one, n in self._spans()]
+        self.nodes = self._exact(nodes[0], nodes[1])
+
+    def _spans(self) -> tuple[tuple[int, int], tuple[int, int]]:
+        return (self.first[0], self.count[0]), (self.first[1], self.count[1])
+
+    def _exact(self, rows: Floats, cols: Floats) -> tuple[Floats, Floats]:
+        x, y = np.meshgrid(
+            self.grid.left + self.grid.dx * cols, self.grid.top - self.grid.dy * rows
+        )
+        moved: tuple[Floats, Floats] = transformer(self.grid.crs, self.source.crs).transform(x, y)
+        return moved
+
+    def cell(self, places: Floats, axis: int) -> Ints:
+        """The lattice cell of places along rows (0) or columns (1), counted from the first."""
+        return np.floor(places / LATTICE).astype(np.int64) - self.first[axis]
+
+    def between(self, rows: Floats, cols: Floats) -> tuple[Floats, Floats]:
+        """Coordinates bilinear between the nodes."""
+        at = (self.cell(rows, 0), self.cell(cols, 1))
+        share = (
+            rows / LATTICE - self.first[0] - at[0],
+            cols / LATTICE - self.first[1] - at[1],
+        )
+        x, y = self.nodes
+        return _between_nodes(x, at, share, self.turn), _between_nodes(y, at, share, 0.0)
+
+    def rough(self) -> NDArray[np.bool_]:
+        """Lattice cells in which bilinear is off by more than `MOST_OFF` source cells."""
+        quarters = [
+            ((one + np.arange(n))[:, None] + [0.25, 0.75]).ravel() * float(LATTICE)
+            for one, n in self._spans()
+        ]
+        guess_x, guess_y = self.between(quarters[0], quarters[1])
+        true_x, true_y = self._exact(quarters[0], quarters[1])
+        off_x = np.abs(_short(true_x - guess_x, self.turn)) / self.source.x.step
+        off_y = np.abs(true_y - guess_y) / self.source.y.step
+        good = (off_x <= MOST_OFF) & (off_y <= MOST_OFF)
+        return np.asarray(~good.reshape(self.count[0], 2, self.count[1], 2).all(axis=(1, 3)))
 
 
 def _geographic(source: Source) -> bool:
-    from mapper.grid import parse_crs  # noqa: PLC0415
-
     return bool(parse_crs(source.crs).is_geographic)
 
 

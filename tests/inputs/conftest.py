@@ -14,6 +14,7 @@ from rasterio.transform import from_origin
 
 import mapper
 from mapper.layers.layer import Layer, open_layer, open_source, source_grid
+from mapper.pipeline import Engine
 from mapper.planning import make_plan
 
 LEGEND = "code,rock\n1,basalt\n2,granite\n"
@@ -122,7 +123,7 @@ class Bench:
 
     def run(self, layers: dict[str, Any] | None = None, **tables: Any) -> Any:
         job = mapper.load_job(self.job(layers, **tables))
-        return mapper.run(job, fresh=True, threads=1)
+        return mapper.run(job, fresh=True, engine=Engine(threads=1))
 
 
 def lat_lon(lat: Any, lon: Any) -> dict[str, Any]:

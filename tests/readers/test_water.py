@@ -170,7 +170,7 @@ def test_a_job_derives_runoff_by_each_method(bench, method, potential):
         method, rain, POTENTIAL[potential](months, latitude), np.full(24, 0.5)
     )
     np.testing.assert_allclose(found, expected, rtol=1e-9)
-    assert mapper.run(job, threads=1).totals.consumption.sum() > 0
+    assert mapper.run(job).totals.consumption.sum() > 0
 
 
 def test_a_curve_without_potential_evapotranspiration_is_refused_with_two_ways_out(bench):
@@ -216,8 +216,8 @@ def rates_job(bench, mean):
 
 
 def test_the_mean_of_monthly_rates_exceeds_the_rate_of_the_mean_where_the_law_bends_up(bench):
-    climate = mapper.run(rates_job(bench, "climate"), threads=1).totals.consumption.sum()
-    rates = mapper.run(rates_job(bench, "rates"), threads=1).totals.consumption.sum()
+    climate = mapper.run(rates_job(bench, "climate")).totals.consumption.sum()
+    rates = mapper.run(rates_job(bench, "rates")).totals.consumption.sum()
     law = mapper.LAWS["dessert-2003"]
     days = np.array([31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31])
     kelvin = np.linspace(-10, 25, 12) + 273.15

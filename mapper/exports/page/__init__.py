@@ -1,0 +1,1 @@
+"""The report: one HTML file that opens without a network."""

@@ -1,0 +1,1 @@
+"""How sure the totals are: spreads, draws, totals under every draw, and what drives the spread."""
