@@ -40,7 +40,7 @@ LAYER_NAMES = (
     "coarse_elevation",
 )
 
-VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
+VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared", "class")
 RUNOFF_METHODS = (
     "turc-1954",
     "turc-pike",
@@ -83,6 +83,7 @@ class LayerSpec:
     registration: str | None = None
     paths: tuple[str, ...] = ()
     years: tuple[int, int] | None = None
+    table: str | None = None
     downscale: str = "none"
     lapse_rate: float | None = None
 
@@ -308,6 +309,9 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
     own: dict[str, Any] = {}
     if name == "vegetation":
         own["kind"] = table.choice("kind", VEGETATION_KINDS, default="cover")
+        if own["kind"] == "class":
+            text = table.needed_text("table", '"landcover.csv", with columns class,cover')
+            own["table"] = _absolute(text, folder, table)
         for key, default in (("bare", 0.05), ("dense", 0.86)):
             value = table.number(key)
             own[key] = default if value is None else value

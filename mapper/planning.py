@@ -344,6 +344,32 @@ def _lithology(
     return None
 
 
+def open_lithology(job: Job) -> Lithology:
+    """The geological map of a job without its legend, to see which codes it holds.
+
+    It lies on the job's grid where the map is polygons, else on its own.
+    """
+    spec = replace(job.layers["lithology"], unknown="nodata")
+    problems = Problems()
+    sources = _open_sources(job, problems)
+    if "lithology" in sources:
+        sources = {"lithology": sources["lithology"]}
+        grid = source_grid(sources["lithology"], where=spec.where)
+    else:
+        found = _choose_grid(job, sources) if _polygons_or_wrong(spec) else None
+        if found is None:
+            problems.raise_if_any()
+            raise AssertionError
+        grid = found
+    bare = replace(job, layers={**job.layers, "lithology": spec})
+    opening = Problems()
+    lithology = _lithology(bare, sources, Legend("", {}), grid, opening)
+    opening.raise_if_any()
+    if lithology is None:  # pragma: no cover - then a problem was raised
+        raise AssertionError
+    return lithology
+
+
 def _from_polygons(spec: LayerSpec, legend: Legend, grid: Grid) -> Lithology | None:
     if spec.column is None:
         raise JobError(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Any, Literal
 
@@ -19,7 +20,7 @@ from mapper.layers.source import Source, file_kind
 from mapper.layers.timeline import Step
 from mapper.layers.warp import plan_points, sample_bilinear, sample_nearest, subdivisions
 from mapper.units import INNER_UNIT, MONTHS_PER_YEAR, Conversion, Quantity, conversion
-from mapper.vegetation import cover_from_ndvi
+from mapper.vegetation import cover_from_ndvi, cover_of_classes, read_cover_table
 
 if TYPE_CHECKING:
     from mapper.layers.lapse import Lapse
@@ -74,6 +75,7 @@ class Layer:
     conversion: Conversion
     points: int = 1
     lapse: Lapse | None = None
+    classes: Mapping[int, float] | None = None
 
     @property
     def name(self) -> str:
@@ -141,6 +143,8 @@ class Layer:
         _check_plausible(self, values, valid, PLAUSIBLE[self.name], self.name)
 
     def _converted(self, raw: NDArray[Any], valid: NDArray[np.bool_], factor: float) -> Floats:
+        if self.classes is not None:
+            return cover_of_classes(raw, valid, self.classes, where=self.spec.where)
         values = raw.astype(np.float64)
         if (self.source.scale, self.source.offset) != (1.0, 0.0):
             values = values * self.source.scale + self.source.offset
@@ -354,6 +358,16 @@ def _datum_shift(source: Source, grid: Grid) -> str:
     return f"{names[0]} against {names[1]}: transformed, a shift of {metres:.1f} m mid-grid"
 
 
+def _classes(spec: LayerSpec, source: Source) -> dict[int, float]:
+    if not source.is_integer:
+        raise ValuesError(
+            f'kind = "class" needs whole numbers, and the file holds {source.dtype}',
+            where=spec.where,
+            fix='kind = "cover" or "ndvi", or a raster of classes',
+        )
+    return read_cover_table(spec.table or "", where=f"{spec.where}, table")
+
+
 def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
     """Bring an opened source onto the grid.
 
@@ -369,6 +383,9 @@ def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
     if spec.name == "vegetation" and spec.kind != "cover" and unit is None:
         unit = "1"
     where = f"{spec.where}, units"
+    classes = None
+    if spec.kind == "class":
+        classes = _classes(spec, source)
     return Layer(
         spec=spec,
         source=source,
@@ -376,4 +393,5 @@ def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
         how=how,
         conversion=conversion(unit, QUANTITY[spec.name], where=where),
         points=subdivisions(grid, source) if how == "points" else 1,
+        classes=classes,
     )
