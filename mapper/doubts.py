@@ -10,7 +10,7 @@ from mapper.errors import JobError
 from mapper.laws import Spread
 
 if TYPE_CHECKING:
-    from mapper.job import _Table
+    from mapper.table import Table as _Table
 
 METHODS = ("latin-hypercube",)
 SPREAD_KINDS = ("normal", "lognormal", "uniform", "triangular")
