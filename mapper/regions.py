@@ -20,6 +20,7 @@ from mapper.layers.vector import read_vector, reproject, valid_shapes
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
+
 @dataclass(frozen=True, eq=False)
 class Regions:
     """Regions on the grid; the position after the last name stands for 'outside'."""

@@ -13,9 +13,7 @@ NAMES = [str(path.relative_to(ROOT)) for path in MODULES]
 
 COMPUTING = {"compute", "load", "persist", "to_numpy"}
 LAZY = [
-    name
-    for name in NAMES
-    if name.split("/")[1] in ("dataset.py", "engine.py", "layers", "exports")
+    name for name in NAMES if name.split("/")[1] in ("dataset.py", "engine.py", "layers", "exports")
 ]
 """Modules through which lazy arrays may pass; `pipeline` alone may compute."""
 

@@ -132,9 +132,7 @@ def closure(found: Totals) -> dict[str, float]:
         "regions_and_rocks_to_all_cells_consumption": _apart(
             found.consumption.sum(), consumption, least
         ),
-        "regions_and_rocks_to_all_cells_drawdown": _apart(
-            found.drawdown.sum(), drawdown, least
-        ),
+        "regions_and_rocks_to_all_cells_drawdown": _apart(found.drawdown.sum(), drawdown, least),
     }
 
 

@@ -17,7 +17,13 @@ from mapper.layers.resample import resample
 from mapper.planning import make_plan
 from mapper.sums import add_up, totals
 from tests.making import (
-    EQUAL_AREA, LON_LAT, UTM, small_job, write_netcdf, write_polygons, write_raster,
+    EQUAL_AREA,
+    LON_LAT,
+    UTM,
+    small_job,
+    write_netcdf,
+    write_polygons,
+    write_raster,
 )  # fmt: skip
 
 GRID = Grid(parse_crs(EQUAL_AREA).to_wkt(), 0.0, 12.0, 1.0, 1.0, 12, 12)
@@ -215,7 +221,9 @@ def mixed_plan(request, tmp_path_factory):
                  lon=np.arange(7, 16))  # fmt: skip
     cover = draw.uniform(0, 1, (50, 70))
     cover[5:9, 8:30] = np.nan
-    write_raster(folder / "cover.tif", cover, left=9.99, top=47.02, cell=0.05, crs=LON_LAT, unit="1")
+    write_raster(
+        folder / "cover.tif", cover, left=9.99, top=47.02, cell=0.05, crs=LON_LAT, unit="1"
+    )
     areas = [
         cell & shapely.box(10.4, 44.9, 12.7, 46.8)
         for cell in shapely.get_parts(

@@ -46,7 +46,12 @@ def test_a_sphere_has_the_area_of_a_sphere():
 
 @pytest.mark.parametrize(
     ("crs", "left", "top"),
-    [(UTM, 2e5, 5.5e6), ("EPSG:3857", 1e6, 8e6), ("EPSG:3413", -4e5, -1e6), ("EPSG:2154", 7e5, 6.6e6)],
+    [
+        (UTM, 2e5, 5.5e6),
+        ("EPSG:3857", 1e6, 8e6),
+        ("EPSG:3413", -4e5, -1e6),
+        ("EPSG:2154", 7e5, 6.6e6),
+    ],
 )
 def test_a_projected_cell_has_the_area_of_its_geodesic_polygon(crs, left, top):
     """Source: pyproj.Geod on the cell's outline brought to longitude and latitude."""
@@ -55,7 +60,7 @@ def test_a_projected_cell_has_the_area_of_its_geodesic_polygon(crs, left, top):
     outline = Transformer.from_crs(crs, LON_LAT, always_xy=True)
     ring = shapely.segmentize(shapely.box(0, -1000, 1000, 0), 50.0).exterior.coords
     for row, col in ((0, 0), (13, 7), (29, 29)):
-        x, y = (np.array(ring) + [left + 1000 * col, top - 1000 * row]).T
+        x, y = ([*np.array(ring), left + 1000 * col, top - 1000 * row]).T
         assert areas[row, col] == pytest.approx(geodesic_area(*outline.transform(x, y)), rel=2e-6)
 
 

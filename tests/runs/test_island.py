@@ -6,7 +6,7 @@ import numpy as np
 import rasterio
 from rio_cogeo.cogeo import cog_validate
 
-from tests.making import ROOT, command
+from tests.making import command
 
 
 def test_the_island_runs_and_its_tables_add_up(tmp_path):

@@ -19,7 +19,12 @@ import mapper
 import mapper.errors
 from mapper.cli import main
 from tests.making import (
-    ROOT, command, small_job, write_legend, write_polygons, write_raster,
+    ROOT,
+    command,
+    small_job,
+    write_legend,
+    write_polygons,
+    write_raster,
 )  # fmt: skip
 
 FILES = (
@@ -231,7 +236,7 @@ def test_a_run_that_fails_leaves_nothing_under_a_final_name(tmp_path, monkeypatc
     monkeypatch.setattr("mapper.exports.maps.copy_raster", break_off)
     with pytest.raises(mapper.errors.RunFolderError, match="No space left on device"):
         mapper.run(job)
-    assert [one for one in (tmp_path / "out").rglob("*.tif")] == []
+    assert list((tmp_path / "out").rglob("*.tif")) == []
     assert not (tmp_path / "out" / "run.json").exists()
 
 

@@ -20,9 +20,7 @@ from mapper.errors import (
 
 def test_an_error_shows_problem_place_and_fix():
     error = UnitError("the unit is 'mm'", where="layers.runoff", fix='units = "mm yr-1"')
-    assert str(error) == (
-        "the unit is 'mm'\n  where: layers.runoff\n  fix:   units = \"mm yr-1\""
-    )
+    assert str(error) == ("the unit is 'mm'\n  where: layers.runoff\n  fix:   units = \"mm yr-1\"")
 
 
 @pytest.mark.parametrize(

@@ -129,9 +129,7 @@ def test_a_layer_that_misses_the_grid_is_refused(tmp_path, crs):
 
 def test_longitudes_from_0_to_360_serve_a_grid_west_of_greenwich(tmp_path):
     lon = np.arange(5.0, 360.0, 10.0)
-    path = write_netcdf(
-        tmp_path / "t.nc", np.tile(200.0 + lon / 4, (2, 1)), lat=[5, -5], lon=lon
-    )
+    path = write_netcdf(tmp_path / "t.nc", np.tile(200.0 + lon / 4, (2, 1)), lat=[5, -5], lon=lon)
     grid = grid_of(2, 2, 10.0, left=-20.0, top=10.0, crs=LON_LAT)
     assert values(path, grid)[0].tolist() == [286.25, 288.75]
 

@@ -74,7 +74,9 @@ def test_a_byte_order_mark_of_a_spreadsheet_is_no_trouble(tmp_path):
 
 
 def test_a_legend_in_another_encoding_is_refused_with_what_to_do(tmp_path):
-    (tmp_path / "legend.csv").write_bytes("code,rock,label\n1,granite,Z\xfcrich\n".encode("latin-1"))
+    (tmp_path / "legend.csv").write_bytes(
+        "code,rock,label\n1,granite,Z\xfcrich\n".encode("latin-1")
+    )
     with pytest.raises(LegendError, match="is not UTF-8 text") as caught:
         read_legend(str(tmp_path / "legend.csv"), where="x")
     assert "UTF-8" in caught.value.fix

@@ -67,6 +67,8 @@ def test_a_unit_of_another_quantity_is_refused():
         conversion("K", "water", where="here")
 
 
-@pytest.mark.parametrize("text", ["mm yr-1", "mm  yr^-1", "mm/yr", "mm yr\u207b\u00b9", "mm\u00b7yr-1"])
+@pytest.mark.parametrize(
+    "text", ["mm yr-1", "mm  yr^-1", "mm/yr", "mm yr\u207b\u00b9", "mm\u00b7yr-1"]
+)
 def test_spellings_of_one_unit_are_one(text):
     assert spell(text) == "mm yr-1"
