@@ -171,6 +171,7 @@ class Table:
         return tuple(float(one) for one in listed)
 
     def listed(self, key: str, example: str) -> list[Any]:
+        """Take a list; an empty one where the key is absent."""
         value = self._take(key)
         if value is not None and not isinstance(value, list):
             self.wrong(key, "a list", f"{key} = {example}")
@@ -184,6 +185,7 @@ class Table:
         return value if isinstance(value, dict) else {}
 
     def weight(self, key: str) -> float:
+        """Take a number above zero; 1 where the key is absent."""
         value = self.number(key)
         if value is not None and value <= 0:
             self.wrong(key, "a weight above zero", f"{key} = 1.0")
