@@ -172,6 +172,22 @@ def test_nothing_hangs_over_the_side(browser: Any, unkind_run: Path, width: int)
         assert page.evaluate("document.documentElement.scrollWidth") == width
 
 
+def test_print_leaves_out_controls_and_shows_whole_tables(opened: Any) -> None:
+    opened.emulate_media(media="print")
+    for control in ("nav", ".layers", ".zoom", "#reading"):
+        assert not opened.locator(control).is_visible(), control
+    box = opened.locator(".tall")
+    assert box.evaluate("one => one.scrollHeight <= one.clientHeight + 1")
+
+
+def test_hot_spots_are_switched_on_and_off(opened: Any) -> None:
+    button = opened.locator("#spots-button")
+    assert "off" in opened.locator("#spots").get_attribute("class")
+    button.click()
+    assert button.get_attribute("aria-pressed") == "true"
+    assert opened.locator("#spots").get_attribute("class") == ""
+
+
 @pytest.mark.parametrize("width", [1280, 390])
 def test_axe_finds_no_serious_fault(browser: Any, island_run: Path, width: int) -> None:
     script = _axe()

@@ -58,11 +58,12 @@ def headings(names: Sequence[tuple[str, bool]], *, sortable: bool = False) -> st
 
 def rows_of(rows: Iterable[Sequence[Cell]], *, named: int = 0) -> str:
     """Rows of a table body; the cell at ``named`` is the row's head."""
-    lines = []
-    for row in rows:
-        cells = "".join(cell.render(head=at == named) for at, cell in enumerate(row))
-        lines.append(f"<tr>{cells}</tr>")
-    return "\n".join(lines)
+    return "\n".join(f"<tr>{cells_of(row, named=named)}</tr>" for row in rows)
+
+
+def cells_of(row: Sequence[Cell], *, named: int = 0) -> str:
+    """The cells of one row; the one at ``named`` is the row's head."""
+    return "".join(cell.render(head=at == named) for at, cell in enumerate(row))
 
 
 def table(

@@ -8,7 +8,7 @@ from typing import Any
 
 from mapper.exports.contents import OTHER_ROWS, Contents
 from mapper.exports.page.answer import interval
-from mapper.exports.page.markup import Cell, figure_cell, headings, rows_of
+from mapper.exports.page.markup import Cell, cells_of, figure_cell, headings, rows_of
 from mapper.exports.words import escape, isolate, number, shorten
 
 MOST_ROWS = 2000
@@ -31,8 +31,7 @@ def ranking(contents: Contents) -> str:
     named = 2 if span else 1
     numbered = {name: at for at, name in enumerate(regions.names)}
     body = "\n".join(
-        f'<tr data-r="{numbered[name]}">{"".join(c.render(head=n == named) for n, c in enumerate(row))}'
-        "</tr>"
+        f'<tr data-r="{numbered[name]}">{cells_of(row, named=named)}</tr>'
         for name, row in zip(order, rows, strict=False)
     )
     foot = rows_of([_foot(name, table[name], span) for name in OTHER_ROWS], named=named)
@@ -55,8 +54,8 @@ def _note(span: tuple[str, str] | None) -> str:
     text = "A heading sorts; a region’s name finds it on the map."
     if span:
         text += (
-            " The rank interval holds the places that a region took in 90\u00a0% of the draws: "
-            "regions whose intervals overlap may change places by noise alone."
+            " The rank interval holds the places that a region took in 90\u00a0% of the "
+            "draws: regions whose intervals overlap may change places by noise alone."
         )
     return text
 
