@@ -126,7 +126,7 @@ def find_named(name: str, *, where: str) -> Law:
     """
     laws = find_laws()
     if name not in laws:
-        raise unknown_law(name, laws, where=where, fix="{}")
+        raise unknown_law(name, laws, where=where, fix=f"{where} {{}}")
     return laws[name]
 
 

@@ -50,7 +50,7 @@ def test_the_supply_limit_is_shown_by_its_name():
 def test_an_unknown_law_is_refused_with_the_nearest():
     with pytest.raises(LawError, match="no law 'desert-2003'") as caught:
         law_lines("desert-2003")
-    assert caught.value.fix.startswith("dessert-2003")
+    assert caught.value.fix.startswith("saprolite laws dessert-2003 ")
 
 
 def test_a_law_of_another_package_is_listed_and_shown(monkeypatch):
