@@ -7,6 +7,7 @@ from worlds import ISLAND
 
 from mapper.job import load_job
 from mapper.pipeline import run
+from mapper.planning import make_plan
 
 
 @pytest.fixture(scope="module")
@@ -55,3 +56,28 @@ def test_hot_spots_are_written_largest_first(folder):
     assert table.area_km2.min() >= 5.0
     assert table.total_t_per_yr.is_monotonic_decreasing
     assert len(table) >= 2
+
+
+def test_a_job_without_regions_has_intervals_and_an_empty_ranking(tmp_path):
+    job = load_job(ISLAND)
+    run(
+        replace(job, regions=None, uncertainty=replace(job.uncertainty, draws=50)),
+        out=tmp_path,
+    )
+    table = pd.read_csv(tmp_path / "tables/regions.csv")
+    assert table.region.tolist() == ["outside", "all"]
+    assert (table.drawdown_t_per_yr_p05 < table.drawdown_t_per_yr_p95).all()
+    assert pd.read_csv(tmp_path / "tables/ranking.csv").empty
+
+
+def test_a_grid_without_a_result_has_totals_of_zero_without_spread(tmp_path):
+    job = load_job(ISLAND)
+    left, top = make_plan(job).grid.left, make_plan(job).grid.top
+    sea = replace(job.grid, bounds=(left, top - 0.05, left + 0.05, top))
+    draws = replace(job.uncertainty, draws=50)
+    run(
+        replace(job, grid=sea, regions=None, ranking=None, uncertainty=draws, write=()),
+        out=tmp_path,
+    )
+    table = pd.read_csv(tmp_path / "tables/regions.csv")
+    assert table.drawdown_t_per_yr_p95.tolist() == [0.0, 0.0]
