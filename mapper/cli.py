@@ -69,6 +69,14 @@ def _parser() -> argparse.ArgumentParser:
     run.set_defaults(action=_run)
     inspect = commands.add_parser("inspect", help="look at a job before it runs, problems and all")
     inspect.add_argument("job", metavar="JOB", help="the job file (TOML)")
+    inspect.add_argument(
+        "--write-legend",
+        metavar="FILE",
+        help="write every code of the geological map to a legend for you to fill in, and stop",
+    )
+    inspect.add_argument(
+        "--pictures", metavar="DIR", help="write a small picture of each layer into a folder"
+    )
     inspect.set_defaults(action=_inspect)
     verify = commands.add_parser("verify", help="check that a run folder is what it claims")
     verify.add_argument("folder", metavar="RUN", help="the folder of a finished run")
@@ -228,8 +236,19 @@ def _inspect(chosen: argparse.Namespace) -> int:
     from mapper.pipeline import inspect  # noqa: PLC0415
     from mapper.planning import open_job  # noqa: PLC0415
 
+    if chosen.write_legend:
+        from mapper.exports.starter import write_starter_legend  # noqa: PLC0415
+
+        count = write_starter_legend(open_job(chosen.job), chosen.write_legend)
+        print(f"{count} codes in {chosen.write_legend}: fill in the column 'rock'")  # noqa: T201
+        return DONE
     report = inspect(open_job(chosen.job))
     print("\n".join(report.lines()))  # noqa: T201
+    if chosen.pictures:
+        from mapper.exports.starter import write_pictures  # noqa: PLC0415
+
+        names = write_pictures(report.plan, chosen.pictures)
+        print(f"pictures    {', '.join(names)} in {chosen.pictures}")  # noqa: T201
     return DONE
 
 

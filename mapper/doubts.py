@@ -10,7 +10,7 @@ from mapper.errors import JobError
 from mapper.laws import Spread
 
 if TYPE_CHECKING:
-    from mapper.job import _Table
+    from mapper.table import Table as _Table
 
 METHODS = ("latin-hypercube",)
 SPREAD_KINDS = ("normal", "lognormal", "uniform", "triangular")
@@ -55,6 +55,7 @@ class UncertaintySpec:
     layers: Mapping[str, Spread] = field(default_factory=dict)
     kept_share: Spread | None = None
     correlations: tuple[Correlation, ...] = ()
+    maps: bool = False
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -110,6 +111,7 @@ def uncertainty_spec(table: _Table) -> UncertaintySpec:
         layers=_layer_spreads(layers),
         kept_share=None if spread is None else replace(spread, per_rock=per_rock is not False),
         correlations=_correlations(table),
+        maps=table.flag("maps") or False,
     )
 
 

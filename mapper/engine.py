@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, field
 from enum import IntFlag
 from typing import NamedTuple
 
@@ -12,15 +12,16 @@ from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
 from mapper.grid import Grid, Window, cell_areas
-from mapper.hydrology import derive_runoff
+from mapper.job import WaterSpec
 from mapper.laws import Capped
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
+from mapper.layers.water import derive_water
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import Alternative, RockLaw, Scheme
 from mapper.states import AXES as STATE_AXES
-from mapper.states import StateCounts, StateLayout, count_states
+from mapper.states import StateCounts, StateLayout, count_states, merge_states
 from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
@@ -80,6 +81,15 @@ class Plan:
     scheme: Scheme
     regions: Regions | None
     notes: tuple[str, ...] = ()
+    water: WaterSpec = field(default_factory=WaterSpec)
+    month_shares: tuple[float, ...] = ()
+    """Parts of a year that the twelve months take, where the rates of months are averaged."""
+
+    def parts_of_year(self) -> list[tuple[int | None, float]]:
+        """Months and their parts of the year where rates are averaged, else the year whole."""
+        if not self.month_shares:
+            return [(None, 1.0)]
+        return list(enumerate(self.month_shares, start=1))
 
     @property
     def n_regions(self) -> int:
@@ -181,18 +191,22 @@ def _outside_flag(name: str) -> Flag:
     return Flag.TEMPERATURE_OUTSIDE if name == "temperature" else Flag.OTHER_OUTSIDE
 
 
-def read_inputs(plan: Plan, window: Window) -> dict[str, Floats]:
-    """The layers that the laws read, on a window, each of shape (n_cells,)."""
+def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[str, Floats]:
+    """The layers that the laws read, on a window, each of shape (n_cells,).
+
+    Parameters
+    ----------
+    month : 1..12 for the mean of that month, None for the mean of whole years. Runoff that is
+        derived is the year's in every month, since the methods hold for years.
+    """
     needed = plan.scheme.read_names()
     inputs = {
-        name: plan.layers[name].values(window).ravel() for name in needed if name in plan.layers
+        name: plan.layers[name].values(window, month).ravel()
+        for name in needed
+        if name in plan.layers
     }
     if "runoff" in needed and "runoff" not in plan.layers:
-        water = plan.layers["precipitation"].values(window).ravel()
-        warmth = inputs.get("temperature")
-        if warmth is None:
-            warmth = plan.layers["temperature"].values(window).ravel()
-        inputs["runoff"] = derive_runoff(plan.water_method, water, warmth)
+        inputs["runoff"] = derive_water(plan.water, plan.layers, plan.grid, window).runoff
     return inputs
 
 
@@ -207,21 +221,29 @@ def evaluate_block_states(
 ) -> tuple[BlockMaps, BlockSums, StateCounts | None]:
     """Evaluate one block, and count the area in each state where a layout is given."""
     rocks = plan.lithology.rock_cells(window)
-    inputs = read_inputs(plan, window)
-    result = RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))
+    year = plan.parts_of_year()
+    whole = read_inputs(plan, window) if len(year) == 1 else None  # read once, months in turn
+
+    def inputs_of(month: int | None) -> dict[str, Floats]:
+        return read_inputs(plan, window, month) if whole is None else whole
+
+    parts = ((share, inputs_of(month)) for month, share in year)
+    result, *others = _evaluate_window(plan, rocks, parts)
     maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
     ground = _split_ground(rocks, regions, areas)
     sums = _sum_block(plan, result, ground, (regions, areas, maps))
-    laws = [
-        _sum_alternative(plan, _replace_entries(one, rocks, inputs, result), ground)
-        for one in plan.scheme.alternatives
-    ]
-    sums = sums._replace(laws=np.stack(laws)) if laws else sums
+    if others:
+        laws = [_sum_alternative(plan, one, ground) for one in others]
+        sums = sums._replace(laws=np.stack(laws))
     if layout is None:
         return maps, sums, None
-    return maps, sums, _count_block(plan, layout, result, ground, inputs)
+    counts = [
+        _count_block(plan, layout, result, ground.part(share), inputs_of(month))
+        for month, share in year
+    ]
+    return maps, sums, counts[0] if len(counts) == 1 else merge_states(counts)
 
 
 class _Ground(NamedTuple):
@@ -231,6 +253,10 @@ class _Ground(NamedTuple):
     cell: Ints
     key: Ints
     area: Floats
+
+    def part(self, share: float) -> _Ground:
+        """The same pieces for a part of the year."""
+        return self if share == 1.0 else self._replace(area=self.area * share)
 
 
 def _split_ground(rocks: RockCells, regions: RegionCells, areas: Floats) -> _Ground:
@@ -267,6 +293,28 @@ def _count_block(
 def state_layout(plan: Plan) -> StateLayout:
     """Which layers the states of a plan are made of."""
     return StateLayout(plan.scheme.input_names(), N_ROCKS)
+
+
+def _evaluate_window(
+    plan: Plan, rocks: RockCells, parts: Iterable[tuple[float, dict[str, Floats]]]
+) -> list[RockResult]:
+    """Entries by the job's own laws and by each alternative: the mean over the parts of the year.
+
+    Parameters
+    ----------
+    parts : each part's share of the year and its layers.
+    """
+    n = rocks.cell.size
+    every = (None, *plan.scheme.alternatives)
+    rates = [np.zeros(n) for _ in every]
+    flags = [np.zeros(n, dtype=np.uint8) for _ in every]
+    for share, inputs in parts:
+        own = RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))
+        for at, one in enumerate(every):
+            part = own if one is None else _replace_entries(one, rocks, inputs, own)
+            rates[at] += part.rate if share == 1.0 else share * part.rate
+            flags[at] |= part.flags
+    return [RockResult(*one) for one in zip(rates, flags, strict=True)]
 
 
 def _replace_entries(

@@ -3,11 +3,9 @@
 from __future__ import annotations
 
 import difflib
-import json
 import math
 import os
 import re
-import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -20,9 +18,11 @@ from mapper.doubts import (
     spread_of,
     uncertainty_spec,
 )
-from mapper.errors import JobError, MissingFileError, Problems
+from mapper.errors import JobError, Problems
 from mapper.laws import CAP, Spread
 from mapper.rocks import ROCK_NAMES
+from mapper.table import Table as _Table
+from mapper.table import read_toml
 
 LAYER_NAMES = (
     "lithology",
@@ -33,13 +33,27 @@ LAYER_NAMES = (
     "erosion",
     "soil_shielding",
     "evapotranspiration",
+    "potential_evapotranspiration",
     "soil_co2",
     "reference_consumption",
+    "elevation",
+    "coarse_elevation",
 )
 
-VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared")
-RUNOFF_METHODS = ("turc-1954", "turc-pike")
+VEGETATION_KINDS = ("cover", "ndvi", "ndvi-squared", "class")
+RUNOFF_METHODS = (
+    "turc-1954",
+    "turc-pike",
+    "budyko-1974",
+    "fu-1981",
+    "oldekop",
+    "schreiber",
+    "zhang-2001",
+)
+POTENTIAL_METHODS = ("oudin-2005", "hamon-1963", "thornthwaite-1948")
+TIME_MEANS = ("climate", "rates")
 REGISTRATIONS = ("cell", "node")
+DOWNSCALING = ("none", "lapse-rate")
 RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
@@ -70,6 +84,9 @@ class LayerSpec:
     registration: str | None = None
     paths: tuple[str, ...] = ()
     years: tuple[int, int] | None = None
+    table: str | None = None
+    downscale: str = "none"
+    lapse_rate: float | None = None
 
     @property
     def where(self) -> str:
@@ -144,6 +161,14 @@ class RegionsSpec:
 
 
 @dataclass(frozen=True, kw_only=True)
+class WaterSpec:
+    """The ``[water]`` table: how runoff is derived, and potential evapotranspiration before it."""
+
+    method: str = "turc-1954"
+    potential: str | None = None
+
+
+@dataclass(frozen=True, kw_only=True)
 class Job:
     """A job file as read: nothing opened yet, every path absolute."""
 
@@ -151,13 +176,19 @@ class Job:
     title: str
     grid: GridSpec
     layers: Mapping[str, LayerSpec]
-    water_method: str
+    water: WaterSpec
     law: LawSpec
     regions: RegionsSpec | None
     folder: str
     uncertainty: UncertaintySpec | None = None
     ranking: RankingSpec | None = None
     write: tuple[str, ...] = WRITTEN
+    time_mean: str = "climate"
+
+    @property
+    def water_method(self) -> str:
+        """The name of the method that derives runoff."""
+        return self.water.method
 
 
 def load_job(path: str | Path) -> Job:
@@ -192,7 +223,7 @@ def read_job(path: str | Path) -> tuple[Job | None, Problems]:
     MissingFileError, JobError where the file cannot be read at all.
     """
     path = Path(path).absolute()
-    table = _read_toml(path)
+    table = read_toml(path)
     problems = Problems()
     root = _Table(table, where=str(path), problems=problems)
     folder = path.parent
@@ -201,7 +232,8 @@ def read_job(path: str | Path) -> tuple[Job | None, Problems]:
         title=root.text("title", default=path.stem),
         grid=_grid_spec(root.table("grid")),
         layers=_layer_specs(root.table("layers"), folder),
-        water_method=root.table("water").choice("method", RUNOFF_METHODS, default="turc-1954"),
+        water=_water_spec(root.table("water")),
+        time_mean=root.table("time").choice("mean", TIME_MEANS, default="climate"),
         law=_law_spec(root.table("law")),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
         uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
@@ -215,179 +247,6 @@ def read_job(path: str | Path) -> tuple[Job | None, Problems]:
     lithology = job.layers.get("lithology")
     enough = all(paths) and lithology is not None and bool(lithology.legend)
     return (job if enough else None), problems
-
-
-def _read_toml(path: Path) -> dict[str, Any]:
-    if not path.is_file():
-        near = difflib.get_close_matches(path.name, _toml_names(path.parent), n=1)
-        raise MissingFileError(
-            f"there is no job file {path.name!r}",
-            where=str(path.parent),
-            fix=f"saprolite run {path.parent / near[0]}" if near else "the path of a .toml file",
-        )
-    try:
-        return tomllib.loads(path.read_bytes().decode("utf-8-sig").replace("\r\n", "\n"))
-    except tomllib.TOMLDecodeError as cause:
-        raise JobError(
-            f"the job file is not valid TOML: {cause}",
-            where=str(path),
-            fix="mend the line and column named; text goes in double quotes",
-        ) from cause
-    except UnicodeDecodeError as cause:
-        raise JobError(
-            f"the job file is not UTF-8 text (byte {cause.start})",
-            where=str(path),
-            fix="save it as UTF-8",
-        ) from cause
-
-
-def _toml_names(folder: Path) -> list[str]:
-    return [one.name for one in folder.glob("*.toml")] if folder.is_dir() else []
-
-
-class _Table:
-    """A TOML table that knows its place, checks each value, and notes keys nobody asked for."""
-
-    def __init__(self, table: Mapping[str, Any], *, where: str, problems: Problems) -> None:
-        self.values = table
-        self.where = where
-        self.problems = problems
-        self.known: list[str] = []
-        self.children: list[_Table] = []
-
-    def _take(self, key: str) -> Any:
-        self.known.append(key)
-        return self.values.get(key)
-
-    def wrong(self, key: str, needed: str, fix: str) -> None:
-        value = self.values.get(key)
-        problem = f"{key} = {value!r}, and {needed} is needed" if key in self.values else needed
-        self.problems.add(JobError(problem, where=f"{self.where}, {key}", fix=fix))
-
-    def table(self, key: str) -> _Table:
-        value = self._take(key)
-        if value is not None and not isinstance(value, dict):
-            self.wrong(key, "a table", f"[{key}] on a line of its own")
-            value = {}
-        separator = ", " if self.where.endswith(".toml") else "."
-        child = _Table(value or {}, where=f"{self.where}{separator}{key}", problems=self.problems)
-        self.children.append(child)
-        return child
-
-    def text(self, key: str, *, default: str) -> str:
-        value = self._take(key)
-        if value is None:
-            return default
-        if not isinstance(value, str) or not value.strip():
-            self.wrong(key, "text", f'{key} = "..."')
-            return default
-        return value
-
-    def optional_text(self, key: str) -> str | None:
-        value = self.text(key, default="")
-        return value or None
-
-    def needed_text(self, key: str, example: str) -> str:
-        if key not in self.values:
-            self.known.append(key)
-            self.wrong(key, f"{key} is missing", f"{key} = {example}")
-            return ""
-        return self.text(key, default="")
-
-    def choice(self, key: str, among: tuple[str, ...], *, default: str) -> str:
-        value = self.text(key, default=default)
-        if value not in among:
-            near = difflib.get_close_matches(value, among, n=1, cutoff=0.0)[0]
-            self.wrong(key, "one of " + ", ".join(among), f'{key} = "{near}"')
-            return default
-        return value
-
-    def choices(
-        self, key: str, among: tuple[str, ...], *, default: tuple[str, ...]
-    ) -> tuple[str, ...]:
-        value = self._take(key)
-        if value is None:
-            return default
-        listed = value if isinstance(value, list) else [value]
-        if any(one not in among for one in listed):
-            needed = "a list of " + ", ".join(among)
-            self.wrong(key, needed, f"{key} = {json.dumps(list(among))}")
-            return default
-        return tuple(listed)
-
-    def number(self, key: str) -> float | None:
-        value = self._take(key)
-        if value is None:
-            return None
-        if isinstance(value, bool) or not isinstance(value, int | float):
-            self.wrong(key, "a number", f"{key} = 1.0, without quotes")
-            return None
-        if not math.isfinite(value):
-            self.wrong(key, "a finite number", f"{key} = 1.0")
-            return None
-        return float(value)
-
-    def flag(self, key: str) -> bool | None:
-        value = self._take(key)
-        if value is None or isinstance(value, bool):
-            return value
-        self.wrong(key, "true or false", f"{key} = true")
-        return None
-
-    def whole(self, key: str, *, default: int, least: int) -> int:
-        value = self._take(key)
-        if value is None:
-            return default
-        if isinstance(value, bool) or not isinstance(value, int) or value < least:
-            self.wrong(key, f"a whole number of {least} or more", f"{key} = {max(default, least)}")
-            return default
-        return value
-
-    def numbers(self, key: str, count: int | None, example: str) -> tuple[float, ...] | None:
-        value = self._take(key)
-        if value is None:
-            return None
-        listed = value if isinstance(value, list) else [value]
-        good = all(isinstance(one, int | float) and not isinstance(one, bool) for one in listed)
-        if not good or (count is not None and len(listed) != count):
-            self.wrong(key, f"{count or 'some'} numbers", f"{key} = {example}")
-            return None
-        if key != "nodata" and not all(math.isfinite(one) for one in listed):
-            self.wrong(key, "finite numbers", f"{key} = {example}")
-            return None
-        return tuple(float(one) for one in listed)
-
-    def listed(self, key: str, example: str) -> list[Any]:
-        value = self._take(key)
-        if value is not None and not isinstance(value, list):
-            self.wrong(key, "a list", f"{key} = {example}")
-        return value if isinstance(value, list) else []
-
-    def raw(self, key: str, example: str) -> dict[str, Any]:
-        """Take a table whose keys somebody else checks."""
-        value = self._take(key)
-        if value is not None and not isinstance(value, dict):
-            self.wrong(key, "a table", f"{key} = {example}")
-        return value if isinstance(value, dict) else {}
-
-    def weight(self, key: str) -> float:
-        value = self.number(key)
-        if value is not None and value <= 0:
-            self.wrong(key, "a weight above zero", f"{key} = 1.0")
-        return 1.0 if value is None else value
-
-    def finish(self) -> None:
-        """Note every key that was not asked for, with the nearest one that is known."""
-        for key in self.values:
-            if key in self.known:
-                continue
-            near = difflib.get_close_matches(key, self.known, n=1, cutoff=0.5)
-            fix = f"{near[0]}" if near else "one of: " + ", ".join(sorted(set(self.known)))
-            self.problems.add(
-                JobError(f"unknown key {key!r}", where=f"{self.where}, {key}", fix=fix)
-            )
-        for child in self.children:
-            child.finish()
 
 
 def _absolute(text: str, folder: Path, table: _Table) -> str:
@@ -470,17 +329,23 @@ def _layer_spec(name: str, table: _Table, folder: Path) -> LayerSpec:
             column=table.optional_text("column"),
             unknown=table.choice("unknown", ("error", "nodata"), default="error"),
         )
-    vegetation: dict[str, Any] = {}
+    own: dict[str, Any] = {}
     if name == "vegetation":
-        vegetation["kind"] = table.choice("kind", VEGETATION_KINDS, default="cover")
+        own["kind"] = table.choice("kind", VEGETATION_KINDS, default="cover")
+        if own["kind"] == "class":
+            text = table.needed_text("table", '"landcover.csv", with columns class,cover')
+            own["table"] = _absolute(text, folder, table)
         for key, default in (("bare", 0.05), ("dense", 0.86)):
             value = table.number(key)
-            vegetation[key] = default if value is None else value
-        if vegetation["bare"] >= vegetation["dense"]:
+            own[key] = default if value is None else value
+        if own["bare"] >= own["dense"]:
             table.wrong("bare", "bare below dense", "bare = 0.05 and dense = 0.86")
+    if name == "temperature":
+        own["downscale"] = table.choice("downscale", DOWNSCALING, default="none")
+        own["lapse_rate"] = table.number("lapse_rate")
     return LayerSpec(
         **common,
-        **vegetation,
+        **own,
         units=table.optional_text("units"),
         years=_years(table),
         scale=table.number("scale"),
@@ -523,6 +388,15 @@ def _registration(table: _Table) -> str | None:
         table.known.append("registration")
         return None
     return table.choice("registration", REGISTRATIONS, default="cell")
+
+
+def _water_spec(table: _Table) -> WaterSpec:
+    method = table.choice("method", RUNOFF_METHODS, default="turc-1954")
+    if "potential" not in table.values:
+        table.known.append("potential")
+        return WaterSpec(method=method)
+    potential = table.choice("potential", POTENTIAL_METHODS, default="oudin-2005")
+    return WaterSpec(method=method, potential=potential)
 
 
 def _law_spec(table: _Table) -> LawSpec:

@@ -39,7 +39,7 @@ from mapper.exports.doubts import (
 )
 from mapper.exports.files import write_csv, write_json
 from mapper.exports.handover import hand_over, list_files
-from mapper.exports.maps import MAPS, MapKind, write_map
+from mapper.exports.maps import INTERVAL_MAPS, MAPS, MapKind, write_map
 from mapper.exports.record import (
     CAUTIONS,
     constants,
@@ -79,8 +79,9 @@ from mapper.planning import (
 from mapper.ranking import CLEARLY_AHEAD, Ranking
 from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
-from mapper.uncertainty.propagate import Apply, Work
-from mapper.uncertainty.spread import SpreadFound, find_spread, make_draws
+from mapper.uncertainty.cells import MAP_DRAWS, cell_intervals, first_draws
+from mapper.uncertainty.propagate import Apply, Samples, Work
+from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
@@ -148,16 +149,16 @@ def run(
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
     draws = make_draws(job, plan)
-    layout = None if draws is None else draws.layout
+    todo = _todo(job, plan, draws)
     windows = blocks(plan.grid, block_shape(plan, engine.threads, engine.memory))
     with _locked(folder):
         journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
-        resumed = _compute_blocks((plan, layout), windows, journal, engine, progress)
+        resumed = _compute_blocks(todo, windows, journal, engine, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
-        _write_maps(plan, windows, journal, folder, (engine.threads, progress))
+        _write_maps(todo, windows, journal, folder, (engine.threads, progress))
         spread = None
         if draws is not None:
             counts = _merge_blocks(journal, len(windows))
@@ -282,11 +283,31 @@ def _merge_blocks(journal: Journal, n_blocks: int) -> StateCounts:
     return merge_states(merged)
 
 
-def _work(
-    todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int
-) -> int:
+@dataclass(frozen=True, kw_only=True, eq=False)
+class _Todo:
+    """What is computed of each block: states where there are draws, intervals on request."""
+
+    plan: Plan
+    layout: StateLayout | None
+    map_samples: Samples | None
+
+    @property
+    def maps(self) -> tuple[MapKind, ...]:
+        """The maps that the run leaves."""
+        return MAPS if self.map_samples is None else (*MAPS, *INTERVAL_MAPS)
+
+
+def _todo(job: Job, plan: Plan, draws: Draws | None) -> _Todo:
+    if draws is None or job.uncertainty is None:
+        return _Todo(plan=plan, layout=None, map_samples=None)
+    wanted = job.uncertainty.maps
+    samples = first_draws(draws.samples, MAP_DRAWS) if wanted else None
+    return _Todo(plan=plan, layout=draws.layout, map_samples=samples)
+
+
+def _work(todo: _Todo, window: Window, journal: Journal, index: int) -> int:
     """Compute one block and save it; the task that dask runs."""
-    maps, sums, states = evaluate_block_states(todo[0], window, todo[1])
+    maps, sums, states = evaluate_block_states(todo.plan, window, todo.layout)
     factor = to_rate(1.0)
     arrays: dict[str, NDArray[Any]] = {
         "map_consumption": (maps.consumption * factor).astype(np.float32),
@@ -296,6 +317,10 @@ def _work(
     arrays |= {f"sum_{name}": values for name, values in sums._asdict().items()}
     if states is not None:
         arrays |= {f"state_{name}": values for name, values in states._asdict().items()}
+    if todo.map_samples is not None:
+        found = cell_intervals(todo.plan, window, todo.map_samples) * factor
+        for kind, values in zip(INTERVAL_MAPS, found, strict=True):
+            arrays[f"map_{kind.name}"] = values.astype(np.float32)
     journal.save(index, arrays)
     return window.n_cells
 
@@ -317,7 +342,7 @@ class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
 
 
 def _compute_blocks(
-    what: tuple[Plan, StateLayout | None],
+    what: _Todo,
     windows: list[Window],
     journal: Journal,
     engine: Engine,
@@ -371,20 +396,21 @@ def _checked(found: Totals, folder: Path) -> dict[str, float]:
 
 
 def _write_maps(
-    plan: Plan,
+    todo: _Todo,
     windows: list[Window],
     journal: Journal,
     folder: Path,
     how: tuple[int, Progress],
 ) -> None:
     threads, progress = how
-    total = plan.grid.n_cells * len(MAPS)
+    grid = todo.plan.grid
+    total = grid.n_cells * len(todo.maps)
     progress("maps", 0, total)
     (folder / "maps").mkdir(exist_ok=True)
     task = dask.delayed(_write_one_map, pure=False, traverse=False)
     tasks = [
-        task(folder, kind, plan.grid, windows, journal, dask_key_name=f"map-{kind.name}")
-        for kind in MAPS
+        task(folder, kind, grid, windows, journal, dask_key_name=f"map-{kind.name}")
+        for kind in todo.maps
     ]
     with _Watch("maps", 0, total, progress):
         dask.compute(*tasks, scheduler="threads", num_workers=threads)
@@ -405,6 +431,7 @@ def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Pat
     if not laws:
         for path in paths:
             path.unlink(missing_ok=True)
+            path.with_suffix(".parquet").unlink(missing_ok=True)
         return
     write_csv(paths[0], LAW_COLUMNS, law_rows(laws, names))
     write_csv(paths[1], SPREAD_COLUMNS, spread_rows(laws, names))

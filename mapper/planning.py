@@ -11,16 +11,24 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.coverage import polygons_on
-from mapper.engine import Plan
+from mapper.engine import Plan, evaluate_block
 from mapper.errors import GridError, JobError, MapperError, Problems
-from mapper.grid import Grid, Window, blocks, parse_crs, same_crs
+from mapper.grid import Grid, Window, blocks, cell_areas, parse_crs, same_crs
 from mapper.job import GridSpec, Job, LayerSpec, read_job
+from mapper.layers.lapse import with_lapse
 from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
 from mapper.layers.lithology import Lithology, unknown_codes
 from mapper.layers.oddities import odd_values
 from mapper.layers.source import Source, file_kind
 from mapper.layers.vector import read_vector, reproject, valid_shapes
 from mapper.layers.warp import subdivisions
+from mapper.layers.water import (
+    check_months,
+    has_potential,
+    month_shares,
+    needed_layers,
+    no_potential,
+)
 from mapper.legend import Legend, normal_code, read_legend
 from mapper.regions import Regions, open_regions
 from mapper.scheme import Scheme, build_scheme
@@ -96,6 +104,51 @@ def make_plan(job: Job) -> Plan:
         with problems.gather():
             regions = open_regions(job.regions, grid)
     notes: list[str] = []
+    shares: tuple[float, ...] = ()
+    with problems.gather():
+        check_months(job, layers)
+        shares = month_shares(job, layers)
+        notes += _look(lithology, layers, problems)
+    problems.raise_if_any()
+    if lithology is None or scheme is None:  # pragma: no cover - then a problem was raised
+        raise AssertionError
+    plan = Plan(
+        grid,
+        lithology,
+        layers,
+        job.water_method,
+        scheme,
+        regions,
+        water=job.water,
+        month_shares=shares,
+    )
+    return replace(plan, notes=(*notes, *_compare_means(plan)))
+
+
+def _compare_means(plan: Plan) -> list[str]:
+    """By how much the mean of monthly rates differs from the rate of the mean climate."""
+    if not plan.month_shares:
+        return []
+    totals = np.zeros(2)
+    for window in sample_windows(plan.grid):
+        part = Window(window.row, window.col, min(window.n_rows, 128), min(window.n_cols, 128))
+        areas = np.broadcast_to(cell_areas(plan.grid, part), part.shape)
+        for at, one in enumerate((plan, replace(plan, month_shares=()))):
+            totals[at] += np.nansum(evaluate_block(one, part)[0].consumption * areas)
+    if not totals[1] > 0:
+        return []
+    percent = 100 * (totals[0] / totals[1] - 1)
+    return [
+        "time: mean of the rates of months; on cells looked at before the run it gives "
+        f"{percent:+.2f} % against the rate of the mean climate"
+    ]
+
+
+def _look(
+    lithology: Lithology | None, layers: Mapping[str, Layer], problems: Problems
+) -> list[str]:
+    """Look at values and codes: problems are gathered, oddities returned as notes."""
+    notes: list[str] = []
     if lithology is not None:
         notes += _check_codes(lithology, problems)
         if lithology.source is not None:
@@ -105,10 +158,7 @@ def make_plan(job: Job) -> Plan:
             sample_layer(layer)
             found = (*layer.source.notes, *odd_values(layer))
             notes += [f"{layer.name}: {note}" for note in found]
-    problems.raise_if_any()
-    if lithology is None or scheme is None:  # pragma: no cover - then a problem was raised
-        raise AssertionError
-    return Plan(grid, lithology, layers, job.water_method, scheme, regions, tuple(notes))
+    return notes
 
 
 def _open_sources(job: Job, problems: Problems) -> dict[str, Source]:
@@ -140,9 +190,16 @@ def _check_layers(job: Job, scheme: Scheme) -> None:
             continue
         laws = ", ".join(law.name for law in scheme.every_law() if name in law.input_names)
         if name == "runoff":
-            if "precipitation" in job.layers and "temperature" in job.layers:
+            lacking = needed_layers(job.water, job.layers)
+            if not lacking and has_potential(job):
                 continue
             needed = "runoff, or precipitation and temperature,"
+            if "precipitation" in job.layers and lacking:
+                needed = f"{' and '.join(lacking)} to derive runoff by {job.water.method},"
+                name = lacking[0]  # noqa: PLW2901 - what to write is the layer that lacks
+            elif not lacking:
+                problems.add(no_potential(job))
+                continue
         else:
             needed = f"a {name} layer"
         problems.add(
@@ -257,6 +314,9 @@ def _open_layers(
             continue
         with problems.gather():
             layers[name] = open_layer(job.layers[name], source, grid)
+    if "temperature" in layers and job.layers["temperature"].downscale == "lapse-rate":
+        with problems.gather():
+            layers["temperature"] = with_lapse(layers["temperature"], layers, sources)
     return layers
 
 
@@ -282,6 +342,32 @@ def _lithology(
         points = subdivisions(grid, source) if how == "points" else 1
         return Lithology(spec, legend, grid, how, source, max(points, 2) if how == "points" else 1)
     return None
+
+
+def open_lithology(job: Job) -> Lithology:
+    """The geological map of a job without its legend, to see which codes it holds.
+
+    It lies on the job's grid where the map is polygons, else on its own.
+    """
+    spec = replace(job.layers["lithology"], unknown="nodata")
+    problems = Problems()
+    sources = _open_sources(job, problems)
+    if "lithology" in sources:
+        sources = {"lithology": sources["lithology"]}
+        grid = source_grid(sources["lithology"], where=spec.where)
+    else:
+        found = _choose_grid(job, sources) if _polygons_or_wrong(spec) else None
+        if found is None:
+            problems.raise_if_any()
+            raise AssertionError
+        grid = found
+    bare = replace(job, layers={**job.layers, "lithology": spec})
+    opening = Problems()
+    lithology = _lithology(bare, sources, Legend("", {}), grid, opening)
+    opening.raise_if_any()
+    if lithology is None:  # pragma: no cover - then a problem was raised
+        raise AssertionError
+    return lithology
 
 
 def _from_polygons(spec: LayerSpec, legend: Legend, grid: Grid) -> Lithology | None:

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share, to_rate
 from mapper.engine import evaluate_rock
-from mapper.errors import FileFormatError
+from mapper.errors import FileFormatError, LawError
 from mapper.exports.catalogue import find_named
 from mapper.exports.comparison import Conditions, spell_condition
 from mapper.exports.files import whole_file
@@ -79,7 +79,7 @@ def plot_law(name: str, file: str, conditions: Conditions) -> Path:
     law = find_named(name, where="saprolite laws")
     held = held_values(law, conditions)
     if conditions.rock is not None and conditions.rock not in law.rocks:
-        raise FileFormatError(
+        raise LawError(
             f"law {law.name!r} has no numbers for {conditions.rock}",
             where="saprolite laws --at",
             fix=f"rock={law.rocks[0]!r}, or one of: {', '.join(law.rocks)}",
@@ -280,7 +280,7 @@ def free_place(taken: Floats, length: float) -> float | None:
     Examples
     --------
     >>> free_place(np.array([0.9]), 0.4)
-    0.68
+    0.7
     """
     for middle in np.arange(1.0 - length / 2, length / 2, -0.02):
         if not (np.abs(taken - middle) < length / 2).any():
@@ -314,8 +314,12 @@ def _label_ends(panel: Axes, ends: list[tuple[float, str, Any]]) -> None:
                 "linewidth": 0.6,
                 "shrinkA": 1,
                 "shrinkB": 0,
+                "relpos": (0.0, 0.5),
             },
         )
+
+
+TOP_LABEL = 1.03
 
 
 def spread_apart(places: Sequence[float], heights: Sequence[float]) -> list[float]:
@@ -337,8 +341,11 @@ def spread_apart(places: Sequence[float], heights: Sequence[float]) -> list[floa
             break
         moved[:-1] -= push
         moved[1:] += push
-    lowest = size[0] / 2 - moved[0] if len(moved) else 0.0
-    moved += max(lowest, 0.0)
+    for at in reversed(range(len(moved))):  # none above the panel, then none below it
+        ceiling = TOP_LABEL - size[at] / 2 if at == len(moved) - 1 else moved[at + 1] - gaps[at]
+        moved[at] = min(moved[at], ceiling)
+    for at in range(len(moved)):
+        moved[at] = max(moved[at], size[at] / 2 if at == 0 else moved[at - 1] + gaps[at - 1])
     out = [0.0] * len(places)
     for at, value in zip(order, moved, strict=True):
         out[at] = float(value)
@@ -347,9 +354,9 @@ def spread_apart(places: Sequence[float], heights: Sequence[float]) -> list[floa
 
 def _group_label(group: tuple[str, ...]) -> str:
     """Names of the rocks of one curve, at most three of them."""
-    names = list(group[:3])
-    if len(group) > 3:
-        names = [*group[:2], f"{len(group) - 2} more"]
+    names = sorted(group, key=lambda rock: rock not in WELL_KNOWN)
+    if len(names) > 3:
+        names[2:] = [f"{len(names) - 2}\u00a0more"]
     return "\n".join(textwrap.wrap(", ".join(names), 18))
 
 

@@ -51,7 +51,7 @@ def input_files(job: Job) -> list[str]:
     paths = [
         path
         for spec in job.layers.values()
-        for path in (*(spec.paths or (spec.path,)), spec.legend)
+        for path in (*(spec.paths or (spec.path,)), spec.legend, spec.table)
         if path
     ]
     if job.regions is not None:
@@ -77,7 +77,7 @@ def describe_job(job: Job) -> dict[str, Any]:
     described["path"] = Path(job.path).name
     described["folder"] = Path(job.folder).name
     for spec in described["layers"].values():
-        for key in ("path", "legend"):
+        for key in ("path", "legend", "table"):
             spec[key] = Path(spec[key]).name if spec[key] else None
         spec["paths"] = [Path(one).name for one in spec["paths"]]
     if described["regions"]:

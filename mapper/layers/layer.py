@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from typing import Any, Literal
+from typing import TYPE_CHECKING, Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,7 +20,10 @@ from mapper.layers.source import Source, file_kind
 from mapper.layers.timeline import Step
 from mapper.layers.warp import plan_points, sample_bilinear, sample_nearest, subdivisions
 from mapper.units import INNER_UNIT, MONTHS_PER_YEAR, Conversion, Quantity, conversion
-from mapper.vegetation import cover_from_ndvi
+from mapper.vegetation import cover_from_ndvi, cover_of_classes, read_cover_table
+
+if TYPE_CHECKING:
+    from mapper.layers.lapse import Lapse
 
 Floats = NDArray[np.float64]
 How = Literal["same", "nearest", "bilinear", "mean", "points"]
@@ -29,11 +33,14 @@ QUANTITY: dict[str, Quantity] = {
     "runoff": "water",
     "precipitation": "water",
     "evapotranspiration": "water",
+    "potential_evapotranspiration": "water",
     "vegetation": "fraction",
     "soil_shielding": "fraction",
     "erosion": "erosion",
     "soil_co2": "pressure",
     "reference_consumption": "rate",
+    "elevation": "elevation",
+    "coarse_elevation": "elevation",
 }
 
 PLAUSIBLE: dict[str, tuple[float, float]] = {
@@ -42,11 +49,14 @@ PLAUSIBLE: dict[str, tuple[float, float]] = {
     "runoff": (-500.0, 20_000.0),
     "precipitation": (0.0, 20_000.0),
     "evapotranspiration": (0.0, 6_000.0),
+    "potential_evapotranspiration": (0.0, 6_000.0),
     "vegetation": (-1e-6, 1.0 + 1e-6),
     "soil_shielding": (-1e-6, 1.0 + 1e-6),
     "erosion": (0.0, 1e6),
     "soil_co2": (0.0, 1.0),
     "reference_consumption": (0.0, 100.0),
+    "elevation": (-500.0, 9_000.0),
+    "coarse_elevation": (-500.0, 9_000.0),
 }
 
 
@@ -64,6 +74,8 @@ class Layer:
     how: How
     conversion: Conversion
     points: int = 1
+    lapse: Lapse | None = None
+    classes: Mapping[int, float] | None = None
 
     @property
     def name(self) -> str:
@@ -81,19 +93,34 @@ class Layer:
         ------
         ValuesError where values cannot be what the layer says they are.
         """
+        values = self._plain(window, month)
+        return values if self.lapse is None else self.lapse.correct(self, window, values)
+
+    def _plain(self, window: Window, month: int | None) -> Floats:
         if self.how == "points":
             return self._sampled(window, month)
-        rows, cols = axis_plans(self.source, self.grid, window, _method(self.how))
+        rows, cols = axis_plans(self.source, self.grid, window, method_of(self.how))
         values, valid = read_decoded(self, rows, cols, month)
-        if self.how == "same":
-            inside, taken = same_cells(rows), same_cells(cols)
-            if values.shape == window.shape:
-                return np.where(valid, values, np.nan)
-            whole = np.full(window.shape, np.nan)
-            part = np.where(valid, values, np.nan)[inside[1], taken[1]]
-            whole[inside[0], taken[0]] = part
-            return whole
-        return resample(rows, cols, values, valid, _method(self.how))
+        return self.arrange(window, (rows, cols), values, valid)
+
+    def arrange(
+        self,
+        window: Window,
+        plans: tuple[AxisPlan, AxisPlan],
+        values: Floats,
+        valid: NDArray[np.bool_],
+    ) -> Floats:
+        """Bring values on the source's cells onto a window, as this layer is brought there."""
+        rows, cols = plans
+        if self.how != "same":
+            return resample(rows, cols, values, valid, method_of(self.how))
+        if values.shape == window.shape:
+            return np.where(valid, values, np.nan)
+        inside, taken = same_cells(rows), same_cells(cols)
+        whole = np.full(window.shape, np.nan)
+        part = np.where(valid, values, np.nan)[inside[1], taken[1]]
+        whole[inside[0], taken[0]] = part
+        return whole
 
     def decode(self, raw: NDArray[Any], valid: NDArray[np.bool_]) -> Floats:
         """Raw values in inner units; what is not valid is left as it falls."""
@@ -116,6 +143,8 @@ class Layer:
         _check_plausible(self, values, valid, PLAUSIBLE[self.name], self.name)
 
     def _converted(self, raw: NDArray[Any], valid: NDArray[np.bool_], factor: float) -> Floats:
+        if self.classes is not None:
+            return cover_of_classes(raw, valid, self.classes, where=self.spec.where)
         values = raw.astype(np.float64)
         if (self.source.scale, self.source.offset) != (1.0, 0.0):
             values = values * self.source.scale + self.source.offset
@@ -148,7 +177,8 @@ def same_cells(plan: AxisPlan) -> tuple[slice, slice]:
     return slice(first, last + 1), taken
 
 
-def _method(how: How) -> Method:
+def method_of(how: How) -> Method:
+    """The way of weighing source cells that belongs to a way of coming onto the grid."""
     return "nearest" if how in ("same", "points") else how  # type: ignore[return-value]
 
 
@@ -328,6 +358,16 @@ def _datum_shift(source: Source, grid: Grid) -> str:
     return f"{names[0]} against {names[1]}: transformed, a shift of {metres:.1f} m mid-grid"
 
 
+def _classes(spec: LayerSpec, source: Source) -> dict[int, float]:
+    if not source.is_integer:
+        raise ValuesError(
+            f'kind = "class" needs whole numbers, and the file holds {source.dtype}',
+            where=spec.where,
+            fix='kind = "cover" or "ndvi", or a raster of classes',
+        )
+    return read_cover_table(spec.table or "", where=f"{spec.where}, table")
+
+
 def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
     """Bring an opened source onto the grid.
 
@@ -343,6 +383,9 @@ def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
     if spec.name == "vegetation" and spec.kind != "cover" and unit is None:
         unit = "1"
     where = f"{spec.where}, units"
+    classes = None
+    if spec.kind == "class":
+        classes = _classes(spec, source)
     return Layer(
         spec=spec,
         source=source,
@@ -350,4 +393,5 @@ def open_layer(spec: LayerSpec, source: Source, grid: Grid) -> Layer:
         how=how,
         conversion=conversion(unit, QUANTITY[spec.name], where=where),
         points=subdivisions(grid, source) if how == "points" else 1,
+        classes=classes,
     )

@@ -32,7 +32,7 @@ _LON_LAT = "OGC:CRS84"
 @lru_cache(maxsize=32)
 def _opened(path: str, _stamp: tuple[int, int]) -> xr.Dataset:
     if Path(path).is_dir():
-        store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None)
+        store: xr.Dataset = xr.open_zarr(path, decode_cf=False, chunks=None, consolidated=False)
         return store
     with Path(path).open("rb") as stream:
         engine = "scipy" if stream.read(3) == b"CDF" else "h5netcdf"

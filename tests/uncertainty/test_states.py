@@ -9,9 +9,11 @@ from mapper.states import (
     StateLayout,
     area_step,
     count_states,
+    join_bins,
     merge_states,
     to_states,
 )
+from mapper.uncertainty import spread
 
 RANGES = {
     "temperature": (230.0, 320.0),
@@ -108,3 +110,27 @@ def test_too_many_layers_for_one_key_are_noticed():
 def test_an_axis_is_log_where_it_has_no_width():
     assert Axis(mantissa_bits=3).is_log
     assert not Axis(width=1.0).is_log
+
+
+def test_joined_bins_keep_area_and_means_of_every_region_and_rock():
+    ground, area, inputs = entries(20_000)
+    states = to_states(counted(ground, area, inputs), LAYOUT, EXPONENT)
+    joined = join_bins(join_bins(states, "runoff"), "temperature")
+    assert joined.area.size < 0.7 * states.area.size
+    for key in (0, 17, 39):
+        one, other = (each.region * 10 + each.rock == key for each in (states, joined))
+        assert joined.area[other].sum() == pytest.approx(states.area[one].sum())
+        for name in LAYOUT.names:
+            mean = np.average(states.inputs[name][one], weights=states.area[one])
+            found = np.average(joined.inputs[name][other], weights=joined.area[other])
+            assert found == pytest.approx(mean)
+    assert (np.diff(joined.region * 10 + joined.rock) >= 0).all()
+
+
+def test_states_are_joined_only_while_the_totals_stay_close(monkeypatch):
+    states = to_states(counted(*entries(20_000)), LAYOUT, EXPONENT)
+    monkeypatch.setattr(spread, "MOST_STATES", 10)
+    assert spread.join_states(states, lambda _: 1e-3) is states
+    assert spread.join_states(states, lambda _: 1e-5).area.size < states.area.size
+    monkeypatch.setattr(spread, "MOST_STATES", 10**6)
+    assert spread.join_states(states, lambda _: 0.0) is states
