@@ -38,7 +38,7 @@ from mapper.exports.doubts import (
     write_sensitivity,
 )
 from mapper.exports.files import write_csv, write_json
-from mapper.exports.handover import hand_over, list_files
+from mapper.exports.handover import clear_earlier, hand_over, list_files
 from mapper.exports.maps import INTERVAL_MAPS, MAPS, MapKind, write_map
 from mapper.exports.record import (
     CAUTIONS,
@@ -158,6 +158,7 @@ def run(
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
+        clear_earlier(folder)
         _write_maps(todo, windows, journal, folder, (engine.threads, progress))
         spread = None
         if draws is not None:

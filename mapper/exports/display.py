@@ -21,7 +21,7 @@ from mapper.layers.lithology import RockCells
 
 DISPLAY_CELLS = 640_000
 LONGEST_SIDE = 1200
-ROCK_MAP_CELLS = 12_000_000
+ROCK_MAP_CELLS = 50_000_000
 """Above this many cells the rocks are not read a second time for the page."""
 NO_ROCK = 255
 BAND_CELLS = 120_000

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Callable, Mapping
+from pathlib import Path
 from typing import Any
 
 from mapper.exports.contents import Contents
@@ -29,6 +31,24 @@ _FROM_TABLES: Mapping[str, Callable[[Contents], None]] = {
     "netcdf": write_netcdf,
     "geoparquet": write_geoparquet,
 }
+
+
+def clear_earlier(folder: Path) -> None:
+    """Remove what an earlier run left, so that none of it passes for this run's.
+
+    Only files that the earlier record lists, and the record last; a user's own files stay.
+    """
+    record = folder / "run.json"
+    try:
+        listed = [str(one["name"]) for one in json.loads(record.read_text("utf-8"))["files"]]
+    except (OSError, ValueError, KeyError, TypeError):
+        return
+    inside = folder.resolve()
+    for name in listed:
+        path = folder / name
+        if path.resolve().is_relative_to(inside) and path.is_file():
+            path.unlink()
+    record.unlink()
 
 
 def hand_over(contents: Contents, write: tuple[str, ...] = WRITTEN) -> None:

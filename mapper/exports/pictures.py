@@ -115,14 +115,15 @@ def _picture(contents: Contents, display: Display, shown: DisplayMap, shapes: li
 
 
 def _draw_map(axes: Any, display: Display, shown: DisplayMap, shapes: list[Any]) -> None:
+    from matplotlib.collections import LineCollection  # noqa: PLC0415 - slow to import
+
     left, bottom, right, top = display.grid.bounds
     axes.set_facecolor(SEA)
     axes.imshow(
         coloured(shown), extent=(left, right, bottom, top), aspect="auto", interpolation="nearest"
     )
-    for shape in shapes:
-        for ring in _rings(shape):
-            axes.plot(ring[:, 0], ring[:, 1], color=INK, linewidth=0.5, alpha=0.75)
+    rings = [ring for shape in shapes for ring in _rings(shape)]
+    axes.add_collection(LineCollection(rings, colors=INK, linewidths=0.5, alpha=0.75))
     for axis, (low, high) in (("x", (left, right)), ("y", (bottom, top))):
         places = ticks(low, high, 4)
         labels = [tick_label(one, axis, display.grid) for one in places]

@@ -45,7 +45,11 @@ def slug(text: Any) -> str:
 
 def about(value: float, digits: int = 3) -> str:
     """A number rounded to ``digits`` significant digits, for a sentence."""
-    return number(float(f"{value:.{digits}g}"), digits)
+    rounded = float(f"{value:.{digits}g}")
+    for size, word in ((1e9, "billion"), (1e6, "million")):
+        if size <= abs(rounded) < 1000.0 * size:
+            return f"{rounded / size:.{digits}g}\u00a0{word}"
+    return number(rounded, digits)
 
 
 def pretty_unit(unit: str) -> str:

@@ -131,6 +131,8 @@ def test_numbers_are_written_to_be_read(value: float, words: str) -> None:
 def test_a_number_in_a_sentence_is_rounded() -> None:
     assert about(79498.4) == "79,500"
     assert about(0.0061234) == "0.00612"
+    assert about(285_578_933.0) == "286\u00a0million"
+    assert about(2.2596e9) == "2.26\u00a0billion"
 
 
 def test_units_have_raised_exponents() -> None:
