@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import os
 import re
 import sys
 import time
@@ -30,7 +31,11 @@ def main(arguments: Sequence[str] | None = None) -> int:
     from mapper.errors import MapperError  # noqa: PLC0415 - --help imports none of the libraries
 
     try:
-        return int(chosen.action(chosen))
+        code = int(chosen.action(chosen))
+        sys.stdout.flush()  # here, so that a reader who has gone away is noticed
+    except BrokenPipeError:  # whoever reads has enough, as head does
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return DONE
     except MapperError as problem:
         print(f"saprolite: {problem}", file=sys.stderr)  # noqa: T201
         return USERS_INPUT
@@ -40,6 +45,7 @@ def main(arguments: Sequence[str] | None = None) -> int:
             file=sys.stderr,
         )
         return 130
+    return code
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -77,6 +83,16 @@ def _parser() -> argparse.ArgumentParser:
     verify.set_defaults(action=_verify)
     laws = commands.add_parser("laws", help="list the rate laws, or show one")
     laws.add_argument("name", nargs="?", metavar="NAME", help="a law to show in full")
+    laws.add_argument("--plot", metavar="FILE", help="draw its response curves (png, svg, pdf)")
+    laws.add_argument(
+        "--compare", nargs="+", metavar="NAME", help="several laws side by side at one place"
+    )
+    laws.add_argument(
+        "--at",
+        nargs="+",
+        metavar="LAYER=VALUE",
+        help="the place: runoff=800 temperature=12C (or 285K) vegetation=0.6 rock=basalt",
+    )
     laws.set_defaults(action=_laws)
     return parser
 
@@ -116,6 +132,8 @@ def _run(chosen: argparse.Namespace) -> int:
 
 def summary_lines(title: str, result: RunResult) -> list[str]:
     """What a run found, for the terminal."""
+    from mapper.exports.alternatives import spread_lines  # noqa: PLC0415
+
     found = result.totals
     consumption, drawdown = found.consumption.sum(), found.drawdown.sum()
     mapped, valid = found.rock_area.sum(), found.valid_area.sum()
@@ -127,9 +145,8 @@ def summary_lines(title: str, result: RunResult) -> list[str]:
         f"  over {valid:,.0f} km2: {100 * valid / mapped if mapped else 0:.1f} % of the "
         f"{mapped:,.0f} km2 of mapped rock had data",
     ]
-    flagged = float(found.outside_range.sum())
-    if flagged:
-        lines.append(f"  {flagged:,.0f} km2 lie outside the range that their law was fitted in")
+    lines.extend(_flag_lines(result))
+    lines.extend(spread_lines(result.laws))
     if result.ranking is None:
         lines.extend(_top_regions(result))
     else:
@@ -178,6 +195,31 @@ def _driving_quantities(spread: SpreadFound) -> list[str]:
     return lines
 
 
+def _flag_lines(result: RunResult) -> list[str]:
+    """One line for each cause that holds on some ground."""
+    from mapper.exports.tables import CAUSES  # noqa: PLC0415
+
+    found = result.totals
+    mapped = float(found.rock_area.sum())
+    held = {cause: area for cause, area in found.flagged.items() if area > 0}
+    if sum(cause.endswith("_outside") for cause in held) == 1:
+        held.pop("outside_law_range")  # says nothing more than its one cause
+    if not held:
+        return []
+    width = max(len(_short(CAUSES[cause])) for cause in held)
+    return [
+        "  of the mapped rock, by cause:",
+        *(
+            f"    {_short(CAUSES[cause]):{width}}  {area:12,.1f} km2  {100 * area / mapped:5.1f} %"
+            for cause, area in held.items()
+        ),
+    ]
+
+
+def _short(meaning: str) -> str:
+    return meaning.partition(":")[0]
+
+
 def _top_regions(result: RunResult) -> list[str]:
     found = result.totals
     by_region = found.drawdown.sum(axis=1)
@@ -222,10 +264,44 @@ def _verify(chosen: argparse.Namespace) -> int:
 
 def _laws(chosen: argparse.Namespace) -> int:
     from mapper.exports.catalogue import law_lines, laws_lines  # noqa: PLC0415
+    from mapper.exports.comparison import comparison_lines, read_conditions  # noqa: PLC0415
 
-    lines = law_lines(chosen.name) if chosen.name else laws_lines()
+    _check_laws_arguments(chosen)
+    if chosen.compare:
+        names = [chosen.name, *chosen.compare] if chosen.name else chosen.compare
+        lines = comparison_lines(names, chosen.at or [])
+    elif chosen.plot:
+        from mapper.exports.curves import plot_law  # noqa: PLC0415 - matplotlib is slow to load
+
+        path = plot_law(chosen.name, chosen.plot, read_conditions(chosen.at or []))
+        lines = [f"{path}: response curves of {chosen.name}"]
+    else:
+        lines = law_lines(chosen.name) if chosen.name else laws_lines()
     print("\n".join(lines))  # noqa: T201
     return DONE
+
+
+def _check_laws_arguments(chosen: argparse.Namespace) -> None:
+    from mapper.errors import LawError  # noqa: PLC0415
+
+    if chosen.plot and not chosen.name:
+        raise LawError(
+            "which law to draw is not said",
+            where="saprolite laws --plot",
+            fix=f"saprolite laws dessert-2003 --plot {chosen.plot}",
+        )
+    if chosen.plot and chosen.compare:
+        raise LawError(
+            "--plot draws one law, and --compare prints a table of several",
+            where="saprolite laws",
+            fix="one of them at a time",
+        )
+    if chosen.at and not (chosen.plot or chosen.compare):
+        raise LawError(
+            "--at gives conditions, and nothing here is evaluated at them",
+            where="saprolite laws --at",
+            fix="with --compare A B, or with NAME --plot FILE",
+        )
 
 
 class ProgressBar:

@@ -18,12 +18,12 @@ from mapper.errors import LawError
 from mapper.grid import Grid, Window
 from mapper.hydrology import derive_runoff
 from mapper.job import Job
-from mapper.laws import LAWS, Law
+from mapper.laws import Law
 from mapper.layers.layer import QUANTITY, Layer
 from mapper.layers.lithology import Lithology
 from mapper.planning import block_shape, make_plan
 from mapper.rocks import ROCK_NAMES, ROCKS
-from mapper.scheme import RockLaw, Scheme
+from mapper.scheme import RockLaw, Scheme, find_laws, unknown_law
 from mapper.units import INNER_UNIT
 
 Floats = NDArray[np.float64]
@@ -150,9 +150,10 @@ def _scheme(dataset: xr.Dataset, law: str | Law | None) -> Scheme:
             )
         return scheme
     if isinstance(law, str):
-        if law not in LAWS:
-            raise LawError(f"there is no law {law!r}", where="mapper.drawdown", fix=", ".join(LAWS))
-        law = LAWS[law]
+        laws = find_laws()
+        if law not in laws:
+            raise unknown_law(law, laws, where="mapper.drawdown", fix='"{}"')
+        law = laws[law]
     weathering = [str(one) for one in dataset["rock"].to_index() if ROCKS[str(one)].weathers]
     try:
         return Scheme({rock: RockLaw(law, law.central_values(rock)) for rock in weathering})

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
-from typing import TYPE_CHECKING, Any, Literal, get_args
+from typing import TYPE_CHECKING, Any
 
 from mapper.errors import JobError
 from mapper.laws import Spread
@@ -12,8 +12,7 @@ from mapper.laws import Spread
 if TYPE_CHECKING:
     from mapper.table import Table as _Table
 
-Method = Literal["latin-hypercube", "sobol"]
-METHODS: tuple[str, ...] = get_args(Method)
+METHODS = ("latin-hypercube",)
 SPREAD_KINDS = ("normal", "lognormal", "uniform", "triangular")
 
 LAYER_SPREADS: Mapping[str, str] = {
@@ -56,6 +55,7 @@ class UncertaintySpec:
     layers: Mapping[str, Spread] = field(default_factory=dict)
     kept_share: Spread | None = None
     correlations: tuple[Correlation, ...] = ()
+    maps: bool = False
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -111,6 +111,7 @@ def uncertainty_spec(table: _Table) -> UncertaintySpec:
         layers=_layer_spreads(layers),
         kept_share=None if spread is None else replace(spread, per_rock=per_rock is not False),
         correlations=_correlations(table),
+        maps=table.flag("maps") or False,
     )
 
 

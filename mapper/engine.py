@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from enum import IntFlag
 from typing import NamedTuple
@@ -13,12 +13,13 @@ from numpy.typing import NDArray
 from mapper.accounting import drawdown_share
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import WaterSpec
+from mapper.laws import Capped
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
 from mapper.layers.water import derive_water
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
-from mapper.scheme import RockLaw, Scheme
+from mapper.scheme import Alternative, RockLaw, Scheme
 from mapper.states import AXES as STATE_AXES
 from mapper.states import StateCounts, StateLayout, count_states, merge_states
 from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
@@ -46,15 +47,27 @@ class Flag(IntFlag):
 FLAG_MEANING: Mapping[Flag, str] = {
     Flag.NO_DATA: "no result: lithology or a layer that the law reads has no data",
     Flag.PARTLY_NO_DATA: "a part of the cell has no result",
-    Flag.RUNOFF_OUTSIDE: "runoff outside the range that the law was fitted in",
-    Flag.TEMPERATURE_OUTSIDE: "temperature outside the range that the law was fitted in",
-    Flag.OTHER_OUTSIDE: "another layer outside the range that the law was fitted in",
+    Flag.RUNOFF_OUTSIDE: "runoff outside the law's range",
+    Flag.TEMPERATURE_OUTSIDE: "temperature outside the law's range",
+    Flag.OTHER_OUTSIDE: "another layer outside the law's range",
     Flag.CAPPED: "held at the supply limit",
     Flag.NEGATIVE_RUNOFF: "runoff below zero, taken as zero",
     Flag.NOT_FINITE: "the law gave no finite number",
 }
 
 OUTSIDE_RANGE = Flag.RUNOFF_OUTSIDE | Flag.TEMPERATURE_OUTSIDE | Flag.OTHER_OUTSIDE
+
+COUNTED_FLAGS: tuple[Flag, ...] = (
+    Flag.RUNOFF_OUTSIDE,
+    Flag.TEMPERATURE_OUTSIDE,
+    Flag.OTHER_OUTSIDE,
+    OUTSIDE_RANGE,
+    Flag.CAPPED,
+    Flag.NEGATIVE_RUNOFF,
+    Flag.NOT_FINITE,
+)
+"""Causes whose area is added up; ground under two causes of one entry counts once in that entry.
+The area without data is what is left of the rock's area."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -89,7 +102,9 @@ class BlockSums(NamedTuple):
 
     ``area`` [m2] by region; ``total`` of all cells, not split: area [m2], consumption and
     drawdown [mol yr-1]. The others are by region and rock, shape (n_regions, n_rocks, LIMBS):
-    rock area, area with a result, consumption, and the area under each flag.
+    rock area, area with a result, consumption, and the area under each of `COUNTED_FLAGS`.
+    ``laws`` holds for each alternative law consumption, area with a result, and area outside its
+    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS).
     """
 
     area: Counts
@@ -98,6 +113,7 @@ class BlockSums(NamedTuple):
     valid_area: Counts
     consumption: Counts
     flagged: Counts
+    laws: Counts
 
     def plus(self, other: BlockSums) -> BlockSums:
         """Both sums together."""
@@ -138,7 +154,7 @@ def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResu
     read: list[Floats] = []
     known = np.ones(n, dtype=np.bool_)
     for one in law.law.inputs:
-        values = inputs[one.name]
+        values = np.asarray(inputs[one.name], dtype=np.float64)
         known &= ~np.isnan(values)
         if one.name == "runoff" and (values < 0).any():
             flags[values < 0] |= _bit(Flag.NEGATIVE_RUNOFF)
@@ -147,11 +163,22 @@ def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResu
         flags[outside] |= _bit(_outside_flag(one.name))
         read.append(values)
     with np.errstate(all="ignore"):  # what is not finite is flagged below, cell by cell
-        rate = np.broadcast_to(law.law.function(*read, **law.values), (n,))
+        rate, held = _rate(law, read)
+    rate = np.broadcast_to(rate, (n,))
+    if held is not None:
+        flags[held] |= _bit(Flag.CAPPED)
     bad = known & ~np.isfinite(rate)
     flags[bad] |= _bit(Flag.NOT_FINITE)
     flags[~known] = 0
     return RockResult(np.where(known & ~bad, rate, np.nan), flags)
+
+
+def _rate(law: RockLaw, layers: list[Floats]) -> tuple[Floats, NDArray[np.bool_] | None]:
+    """The law's rate, and where the supply limit held it, if the law has one."""
+    function = law.law.function
+    if isinstance(function, Capped):
+        return function.hold(*layers, **law.values)
+    return function(*layers, **law.values), None
 
 
 def _bit(flag: Flag) -> np.uint8:
@@ -172,7 +199,7 @@ def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[st
     month : 1..12 for the mean of that month, None for the mean of whole years. Runoff that is
         derived is the year's in every month, since the methods hold for years.
     """
-    needed = plan.scheme.input_names()
+    needed = plan.scheme.read_names()
     inputs = {
         name: plan.layers[name].values(window, month).ravel()
         for name in needed
@@ -194,17 +221,27 @@ def evaluate_block_states(
 ) -> tuple[BlockMaps, BlockSums, StateCounts | None]:
     """Evaluate one block, and count the area in each state where a layout is given."""
     rocks = plan.lithology.rock_cells(window)
-    result = RockResult(*_evaluate_window(plan, rocks, window))
+    year = plan.parts_of_year()
+    whole = read_inputs(plan, window) if len(year) == 1 else None  # read once, months in turn
+
+    def inputs_of(month: int | None) -> dict[str, Floats]:
+        return read_inputs(plan, window, month) if whole is None else whole
+
+    parts = ((share, inputs_of(month)) for month, share in year)
+    result, *others = _evaluate_window(plan, rocks, parts)
     maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
     ground = _split_ground(rocks, regions, areas)
     sums = _sum_block(plan, result, ground, (regions, areas, maps))
+    if others:
+        laws = [_sum_alternative(plan, one, ground) for one in others]
+        sums = sums._replace(laws=np.stack(laws))
     if layout is None:
         return maps, sums, None
     counts = [
-        _count_block(plan, layout, result, ground.part(share), read_inputs(plan, window, month))
-        for month, share in plan.parts_of_year()
+        _count_block(plan, layout, result, ground.part(share), inputs_of(month))
+        for month, share in year
     ]
     return maps, sums, counts[0] if len(counts) == 1 else merge_states(counts)
 
@@ -258,18 +295,57 @@ def state_layout(plan: Plan) -> StateLayout:
     return StateLayout(plan.scheme.input_names(), N_ROCKS)
 
 
-def _evaluate_window(plan: Plan, rocks: RockCells, window: Window) -> tuple[Floats, Bits]:
-    """The rate of the mean climate, or the mean of the rates of the months."""
-    if not plan.month_shares:
-        return _evaluate_entries(plan.scheme, rocks, read_inputs(plan, window))
-    rate = np.zeros(rocks.cell.size)
-    flags = np.zeros(rocks.cell.size, dtype=np.uint8)
-    for month, share in plan.parts_of_year():
-        inputs = read_inputs(plan, window, month)
-        month_rate, month_flags = _evaluate_entries(plan.scheme, rocks, inputs)
-        rate += share * month_rate
-        flags |= month_flags
-    return rate, flags
+def _evaluate_window(
+    plan: Plan, rocks: RockCells, parts: Iterable[tuple[float, dict[str, Floats]]]
+) -> list[RockResult]:
+    """Entries by the job's own laws and by each alternative: the mean over the parts of the year.
+
+    Parameters
+    ----------
+    parts : each part's share of the year and its layers.
+    """
+    n = rocks.cell.size
+    every = (None, *plan.scheme.alternatives)
+    rates = [np.zeros(n) for _ in every]
+    flags = [np.zeros(n, dtype=np.uint8) for _ in every]
+    for share, inputs in parts:
+        own = RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))
+        for at, one in enumerate(every):
+            part = own if one is None else _replace_entries(one, rocks, inputs, own)
+            rates[at] += part.rate if share == 1.0 else share * part.rate
+            flags[at] |= part.flags
+    return [RockResult(*one) for one in zip(rates, flags, strict=True)]
+
+
+def _replace_entries(
+    other: Alternative, rocks: RockCells, inputs: Mapping[str, Floats], result: RockResult
+) -> RockResult:
+    """The entries as the job's own laws gave them, and its own where the alternative serves."""
+    rate, flags = result.rate.copy(), result.flags.copy()
+    for rock, part in rock_parts(rocks):
+        law = other.replaced.get(rock)
+        if law is not None:
+            cells = rocks.cell[part]
+            taken = {name: inputs[name][cells] for name in law.law.input_names}
+            rate[part], flags[part] = evaluate_rock(law, taken)
+    return RockResult(rate, flags)
+
+
+def _sum_alternative(plan: Plan, result: RockResult, ground: _Ground) -> Counts:
+    """Add up consumption, area with a result and area outside the range, by region and rock."""
+    exponent = unit_exponent(plan.grid)
+    held = ground.area
+    rate, flags = result.rate[ground.entry], result.flags[ground.entry]
+    good = ~np.isnan(rate)
+    rows = (
+        np.where(good, rate, 0.0) * held,
+        np.where(good, held, 0.0),
+        np.where((flags & _bit(OUTSIDE_RANGE)) != 0, held, 0.0),
+    )
+    runs = runs_of(ground.key)
+    n_keys = plan.n_regions * N_ROCKS
+    shape = (plan.n_regions, N_ROCKS, LIMBS)
+    return np.stack([add_up(runs, row, n_keys, exponent).reshape(shape) for row in rows])
 
 
 def _evaluate_entries(
@@ -354,7 +430,7 @@ def _sum_block(
     if not good.all():
         valid_area = add_up(runs, np.where(good, held, 0.0), n_keys, exponent)
         rate = np.where(good, rate, 0.0)
-    flagged = [_flagged(key, held, flags, flag, n_keys, exponent) for flag in Flag]
+    flagged = [_flagged(key, held, flags, flag, n_keys, exponent) for flag in COUNTED_FLAGS]
     return BlockSums(
         area=area,
         total=_sum_cells(maps, areas, exponent),
@@ -362,6 +438,7 @@ def _sum_block(
         valid_area=valid_area.reshape(shape),
         consumption=add_up(runs, rate * held, n_keys, exponent).reshape(shape),
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
+        laws=np.zeros((0, 3, *shape), dtype=np.int64),
     )
 
 

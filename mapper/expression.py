@@ -19,7 +19,7 @@ from typing import Any
 import numpy as np
 
 from mapper.dimensions import NONE, Dimension, Unit
-from mapper.errors import LawError
+from mapper.errors import LawError, Problems
 
 LONGEST = 2000  # characters
 DEEPEST_BRACKETS = 40
@@ -28,6 +28,10 @@ LARGEST_EXPONENT = 10.0
 WRITABLE = frozenset("abcdefghijklmnopqrstuvwxyzABCDEFGHIJKLMNOPQRSTUVWXYZ0123456789_.+-*/(), ")
 
 Operation = Callable[..., Any]
+
+
+class _NotDeclaredError(LawError):
+    """A name that a formula uses and nobody declared."""
 
 
 @dataclass(frozen=True)
@@ -133,7 +137,41 @@ def read(text: str, names: Mapping[str, Unit], *, where: str) -> Typed:
     """
     plain = " ".join(text.splitlines()).strip()
     _check_text(plain, where)
-    return _Reader(names=names, where=where).read(_parse(plain, where))
+    try:
+        return _Reader(names=names, where=where).read(_parse(plain, where))
+    except _NotDeclaredError as first:
+        check_names(text, names, where=where)  # raises with every such name
+        raise first from None  # pragma: no cover - for the reader's comfort
+
+
+def check_names(text: str, names: Iterable[str], *, where: str) -> None:
+    """Check what needs no units: that a formula is arithmetic in form, on these names alone.
+
+    Raises
+    ------
+    LawError, or ManyProblemsError with every name that is not declared.
+    """
+    plain = " ".join(text.splitlines()).strip()
+    _check_text(plain, where)
+    known = list(names)
+    problems = Problems()
+    used = {node.id: node.col_offset for node in reversed(_names_under(_parse(plain, where)))}
+    for name, column in sorted(used.items(), key=lambda pair: pair[1]):
+        if name not in known and name not in FUNCTIONS:
+            problems.add(
+                LawError(
+                    f"{name!r} is not declared{_nearest(name, known)}",
+                    where=f"{where}, column {column + 1}",
+                    fix=f"declare it, or use one of: {', '.join(known)}",
+                )
+            )
+    problems.raise_if_any()
+
+
+def _names_under(node: ast.AST) -> list[ast.Name]:
+    if isinstance(node, ast.Name):
+        return [node]
+    return [name for child in ast.iter_child_nodes(node) for name in _names_under(child)]
 
 
 def names_in(program: Program) -> set[str]:
@@ -234,10 +272,10 @@ class _Reader:
     def _name(self, node: ast.Name) -> Typed:
         unit = self.names.get(node.id)
         if unit is None:
-            raise self._refuse(
-                node,
+            raise _NotDeclaredError(
                 f"{node.id!r} is not declared{_nearest(node.id, self.names)}",
-                f"declare it, or use one of: {', '.join(self.names)}",
+                where=f"{self.where}, column {node.col_offset + 1}",
+                fix=f"declare it, or use one of: {', '.join(self.names)}",
             )
         return Typed((Name(node.id, unit.scale),), unit.dimension)
 

@@ -13,7 +13,7 @@ import numpy as np
 
 from mapper.dimensions import MASS_FLUX, UPTAKE, Dimension, Unit, read_unit
 from mapper.errors import LawError, Problems
-from mapper.expression import FUNCTIONS, Program, evaluate, names_in, read
+from mapper.expression import FUNCTIONS, Program, check_names, evaluate, names_in, read
 from mapper.laws import LAW_INPUTS, Floats, Input, Law, Parameter, Spread, Values
 from mapper.rocks import ROCKS
 
@@ -103,17 +103,27 @@ def formula_law(
     for key, table in parameters.items():
         with problems.gather():
             numbers.append(_parameter(key, table, f"{where}, parameter {key!r}", inputs))
-    problems.raise_if_any()
     chosen = rocks or _rocks([one for one, _ in numbers])
-    _check_rocks(chosen, [one for one, _ in numbers], where)
+    with problems.gather():
+        _check_rocks(chosen, [one for one, _ in numbers], where)
     units = {one.name: unit for one, unit in layers}
     units |= {one.name: unit for one, unit in numbers}
+    function: Formula | None = None
+    names = (tuple(inputs), tuple(parameters))
+    with problems.gather():
+        if all(name in units for name in (*inputs, *parameters)):
+            function = _function(formula, units, names, where)
+        else:  # its units cannot be checked, its names can
+            check_names(formula, (*inputs, *parameters), where=f"{where}, formula")
+    problems.raise_if_any()
+    if function is None:  # pragma: no cover - then a problem was raised
+        raise AssertionError
     return Law(
         name=name,
         title=f"Formula of the user: {name}",
         summary=formula,
         year=0,
-        function=_function(formula, units, (tuple(inputs), tuple(parameters)), where),
+        function=function,
         inputs=tuple(one for one, _ in layers),
         parameters=tuple(one for one, _ in numbers),
         rocks=chosen,
@@ -140,7 +150,7 @@ def _function(
         )
     if not layers:
         raise LawError(
-            "the formula reads no layer", where=where, fix='layers = { runoff = "mm yr-1" }'
+            "the formula reads no layer", where=where, fix='inputs = { runoff = "mm yr-1" }'
         )
     return Formula(layers, parameters, typed.program)
 
@@ -211,13 +221,13 @@ def _parameter(
         name=name,
         symbol=name,
         unit=str(table["unit"]),
-        meaning=str(table.get("meaning", "a parameter of the user's formula")),
+        meaning=_said(table, "meaning", "a parameter of the user's formula", where),
         default=default,
         by_rock=by_rock,
         low=low,
         high=high,
         spread=Spread(kind="normal", sd=sd) if sd else None,
-        source=str(table.get("source", "the job file, no source given")),
+        source=_said(table, "source", "the job file, no source given", where),
         grade="project",
     )
     return parameter, unit
@@ -264,11 +274,17 @@ def _check_keys(table: Mapping[str, object], known: tuple[str, ...], where: str)
             )
 
 
-def _text(table: Mapping[str, object], key: str, where: str) -> str:
+def _text(
+    table: Mapping[str, object], key: str, where: str, fix: str = 'unit = "mmol L-1", or "1"'
+) -> str:
     text = table.get(key)
     if not isinstance(text, str) or not text.strip():
-        raise LawError(f"no {key} is given", where=where, fix=f'{key} = "mmol L-1", or "1"')
+        raise LawError(f"no {key} is given", where=where, fix=fix)
     return text
+
+
+def _said(table: Mapping[str, object], key: str, default: str, where: str) -> str:
+    return _text(table, key, where, f'{key} = "..."') if key in table else default
 
 
 def _number(table: Mapping[str, object], key: str, default: float, where: str) -> float:

@@ -295,6 +295,8 @@ def _scale_at(grid: Grid, rows: Floats, cols: Floats) -> Floats:
         msg = f"CRS {parse_crs(grid.crs).name!r} has no geodetic base"
         raise GridError(msg, where="grid", fix="a projected or longitude/latitude CRS")
     lon, lat = transformer(grid.crs, geodetic.to_wkt()).transform(x, y)
+    if _is_web_mercator(grid.crs):
+        return _web_mercator_scale(geodetic, np.asarray(lat))
     factors: Any = Proj(parse_crs(grid.crs)).get_factors(lon, lat)
     scale = np.asarray(factors.areal_scale, dtype=np.float64)
     if not np.isfinite(scale).all():
@@ -304,3 +306,24 @@ def _scale_at(grid: Grid, rows: Floats, cols: Floats) -> Floats:
             fix="[grid] bounds inside the projection's area of use",
         )
     return scale
+
+
+def _is_web_mercator(crs: str) -> bool:
+    operation = parse_crs(crs).coordinate_operation
+    return operation is not None and "pseudo mercator" in operation.method_name.lower()
+
+
+def _web_mercator_scale(geodetic: CRS, lat: Floats) -> Floats:
+    """Areal scale of the pseudo-Mercator projection: a sphere's formulas on an ellipsoid.
+
+    PROJ gives the scale on the sphere, which is off by up to 0.7 %. With M and N the radii of
+    curvature along and across the meridian it is a^2 / (M N cos^2 lat).
+    """
+    ellipsoid = geodetic.ellipsoid
+    if ellipsoid is None:  # pragma: no cover - every geodetic CRS in PROJ has one
+        raise AssertionError
+    a, b = ellipsoid.semi_major_metre, ellipsoid.semi_minor_metre
+    e2 = 1.0 - (b / a) ** 2
+    phi = np.deg2rad(lat)
+    root = 1.0 - e2 * np.sin(phi) ** 2
+    return np.asarray(root**2 / ((1.0 - e2) * np.cos(phi) ** 2))

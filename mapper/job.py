@@ -19,7 +19,7 @@ from mapper.doubts import (
     uncertainty_spec,
 )
 from mapper.errors import JobError, Problems
-from mapper.laws import Spread
+from mapper.laws import CAP, Spread
 from mapper.rocks import ROCK_NAMES
 from mapper.table import Table as _Table
 from mapper.table import read_toml
@@ -58,6 +58,7 @@ RESAMPLING = ("auto", "nearest", "bilinear", "mean")
 RESPONSES = ("runoff", "temperature", "vegetation", "soil")
 WRITTEN = ("styles", "pictures", "regions", "parquet", "workbook", "page", "crate")
 ALSO = ("netcdf", "geoparquet")
+CAPS = ("none", CAP)
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -117,6 +118,24 @@ class ParameterSpec:
 
 
 @dataclass(frozen=True, kw_only=True)
+class AlternativeSpec:
+    """One entry of ``[law] alternatives``: a law in place of the default, and its weight."""
+
+    name: str
+    weight: float = 1.0
+
+
+@dataclass(frozen=True, kw_only=True)
+class OwnLawSpec:
+    """One ``[law.own.NAME]`` table, as written: its formula and units are checked later."""
+
+    formula: str
+    inputs: Mapping[str, Any]
+    parameters: Mapping[str, Any]
+    rocks: tuple[str, ...] = ()
+
+
+@dataclass(frozen=True, kw_only=True)
 class LawSpec:
     """The ``[law]`` table."""
 
@@ -125,6 +144,10 @@ class LawSpec:
     base: str = "amiotte-suchet-1995"
     responses: Mapping[str, str] = field(default_factory=dict)
     parameters: Mapping[str, ParameterSpec] = field(default_factory=dict)
+    cap: str = "none"
+    own: Mapping[str, OwnLawSpec] = field(default_factory=dict)
+    alternatives: tuple[AlternativeSpec, ...] = ()
+    weight: float = 1.0
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -388,7 +411,48 @@ def _law_spec(table: _Table) -> LawSpec:
         by_rock={key: by_rock.text(key, default="") for key in list(by_rock.values)},
         responses={key: value for key, value in chosen.items() if value},
         parameters={key: _parameter_spec(key, parameters) for key in list(parameters.values)},
+        cap=table.choice("cap", CAPS, default="none"),
+        own=_own_laws(table.table("own")),
+        alternatives=_alternatives(table),
+        weight=table.weight("weight"),
     )
+
+
+def _own_laws(parent: _Table) -> dict[str, OwnLawSpec]:
+    tables = {name: parent.table(name) for name in parent.values}
+    return {
+        name: OwnLawSpec(
+            formula=table.needed_text("formula", '"a * runoff"'),
+            inputs=table.raw("inputs", '{ runoff = "mm yr-1" }'),
+            parameters=table.raw("parameters", '{ a = { value = 0.5, unit = "mmol L-1" } }'),
+            rocks=_rock_list(table),
+        )
+        for name, table in tables.items()
+    }
+
+
+def _rock_list(table: _Table) -> tuple[str, ...]:
+    example = '["basalt", "gabbro"]'
+    listed = table.listed("rocks", example)
+    if not all(isinstance(one, str) for one in listed):
+        table.wrong("rocks", "names of rocks", f"rocks = {example}")
+    return tuple(one for one in listed if isinstance(one, str))
+
+
+def _alternatives(table: _Table) -> tuple[AlternativeSpec, ...]:
+    example = '["west-2012", { name = "dessert-2003", weight = 2.0 }]'
+    chosen: list[AlternativeSpec] = []
+    for place, one in enumerate(table.listed("alternatives", example), start=1):
+        if not isinstance(one, str | dict):
+            table.wrong("alternatives", "names of laws", f"alternatives = {example}")
+            continue
+        values = {"name": one} if isinstance(one, str) else one
+        where = f"{table.where}.alternatives, entry {place}"
+        entry = _Table(values, where=where, problems=table.problems)
+        table.children.append(entry)
+        name = entry.needed_text("name", '"west-2012"')
+        chosen.append(AlternativeSpec(name=name, weight=entry.weight("weight")))
+    return tuple(chosen)
 
 
 def _parameter_spec(name: str, parent: _Table) -> ParameterSpec:

@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from mapper.errors import RunFolderError
 
 WORK = ".work"
+MOST_NAMED = 12  # of the things that changed, in a message
 
 
 @dataclass(frozen=True)
@@ -80,9 +81,11 @@ def open_journal(folder: Path, fingerprint: Mapping[str, Any], *, fresh: bool) -
         journal.clear()
     try:
         if note.exists():
-            _refuse_changes(json.loads(note.read_text(encoding="utf-8")), fingerprint, folder)
+            _refuse_changes(_read_note(note, folder), fingerprint, folder)
         journal.blocks.mkdir(parents=True, exist_ok=True)
-        note.write_text(json.dumps(fingerprint, indent=1), encoding="utf-8")
+        temporary = note.with_name(f".{note.name}")
+        temporary.write_text(json.dumps(fingerprint, indent=1), encoding="utf-8")
+        temporary.replace(note)
     except RunFolderError:
         raise
     except OSError as cause:
@@ -94,12 +97,25 @@ def open_journal(folder: Path, fingerprint: Mapping[str, Any], *, fresh: bool) -
     return journal
 
 
+def _read_note(note: Path, folder: Path) -> dict[str, Any]:
+    try:
+        found: dict[str, Any] = json.loads(note.read_text(encoding="utf-8"))
+    except ValueError as cause:
+        raise RunFolderError(
+            "the note of the unfinished run cannot be read",
+            where=str(folder),
+            fix="--fresh to start over, or --out DIR for another folder",
+        ) from cause
+    return found
+
+
 def _refuse_changes(old: Mapping[str, Any], new: Mapping[str, Any], folder: Path) -> None:
     changed = sorted(key for key in {*old, *new} if old.get(key) != new.get(key))
     if changed:
         raise RunFolderError(
             "the folder holds an unfinished run of another job; changed since: "
-            + ", ".join(changed),
+            + ", ".join(changed[:MOST_NAMED])
+            + (f" and {len(changed) - MOST_NAMED} more" if len(changed) > MOST_NAMED else ""),
             where=str(folder),
             fix="--fresh to start over, or --out DIR for another folder",
         )

@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 import dask
+import geopandas as gpd
 import numpy as np
 from dask.callbacks import Callback
 from numpy.typing import NDArray
@@ -20,6 +21,15 @@ from mapper.accounting import to_rate
 from mapper.cluster import connected, finished
 from mapper.engine import BlockSums, Plan, evaluate_block_states
 from mapper.errors import RunFolderError
+from mapper.exports.alternatives import (
+    LAW_COLUMNS,
+    SPREAD_COLUMNS,
+    LawTotals,
+    describe_alternatives,
+    law_rows,
+    spread_rows,
+    to_law_totals,
+)
 from mapper.exports.contents import Contents
 from mapper.exports.doubts import (
     describe_spread,
@@ -29,7 +39,7 @@ from mapper.exports.doubts import (
 )
 from mapper.exports.files import write_csv, write_json
 from mapper.exports.handover import hand_over, list_files
-from mapper.exports.maps import MAPS, MapKind, write_map
+from mapper.exports.maps import INTERVAL_MAPS, MAPS, MapKind, write_map
 from mapper.exports.record import (
     CAUTIONS,
     constants,
@@ -40,16 +50,20 @@ from mapper.exports.record import (
     versions,
 )
 from mapper.exports.tables import (
+    FLAG_COLUMNS,
     REGION_COLUMNS,
     ROCK_COLUMNS,
     Totals,
     closure,
+    flag_rows,
     region_rows,
     rock_rows,
     to_totals,
     with_intervals,
 )
 from mapper.grid import Grid, Window, blocks, parse_crs
+from mapper.hotspots import COLUMNS as HOTSPOT_COLUMNS
+from mapper.hotspots import find_hotspots, hotspot_rows
 from mapper.job import Job
 from mapper.journal import Journal, open_journal
 from mapper.layers.layer import QUANTITY, Layer
@@ -65,7 +79,8 @@ from mapper.planning import (
 from mapper.ranking import CLEARLY_AHEAD, Ranking
 from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
-from mapper.uncertainty.propagate import Work
+from mapper.uncertainty.cells import MAP_DRAWS, cell_intervals, first_draws
+from mapper.uncertainty.propagate import Apply, Samples, Work
 from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
 from mapper.units import INNER_UNIT
 
@@ -100,6 +115,7 @@ class RunResult:
     resumed_blocks: int
     spread: SpreadFound | None = None
     ranking: Ranking | None = None
+    laws: tuple[LawTotals, ...] = ()
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -133,26 +149,30 @@ def run(
     folder = Path(out if out is not None else job.folder).absolute()
     plan = make_plan(job)
     draws = make_draws(job, plan)
-    layout = None if draws is None else draws.layout
+    todo = _todo(job, plan, draws)
     windows = blocks(plan.grid, block_shape(plan, engine.threads, engine.memory))
     with _locked(folder):
         journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
-        resumed = _compute_blocks((plan, layout), windows, journal, engine, progress)
+        resumed = _compute_blocks(todo, windows, journal, engine, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
         found = to_totals(sums, names, unit_exponent(plan.grid))
         checks = _checked(found, folder)
-        _write_maps(plan, windows, journal, folder, (engine.threads, progress))
-        spread = (
-            None
-            if draws is None
-            else _run_draws(draws, plan, (journal, len(windows)), found, engine.threads)
-        )
+        _write_maps(todo, windows, journal, folder, (engine.threads, progress))
+        spread = None
+        if draws is not None:
+            counts = _merge_blocks(journal, len(windows))
+            spread = find_spread(
+                draws, plan, counts, found.consumption, _in_threads(engine.threads)
+            )
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
+        laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, spread, ranking, folder)
+        _write_laws(laws, found.names, folder)
+        spots = _write_hotspots(job, folder)
         seconds = time.monotonic() - began
-        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking)
-        contents = Contents(folder, plan, found, _record(job, plan, result))
+        result = RunResult(folder, found, checks, seconds, resumed, spread, ranking, laws)
+        contents = Contents(folder, plan, found, _record(job, plan, result), spots)
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
         _write_record(contents, result)
@@ -239,17 +259,14 @@ def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
     return found
 
 
-def _run_draws(
-    draws: Draws, plan: Plan, blocks_of: tuple[Journal, int], found: Totals, threads: int
-) -> SpreadFound:
-    """Merge the states of the blocks and evaluate every draw on them."""
+def _in_threads(threads: int) -> Apply:
+    """Does pieces of work in dask's threads."""
 
     def apply(work: list[Work]) -> list[NDArray[np.float64]]:
         tasks = [dask.delayed(one, pure=False)() for one in work]
         return list(dask.compute(*tasks, scheduler="threads", num_workers=threads))
 
-    counts = _merge_blocks(*blocks_of)
-    return find_spread(draws, plan, counts, found.consumption, apply)
+    return apply
 
 
 STATES_HELD = 2_000_000
@@ -266,11 +283,31 @@ def _merge_blocks(journal: Journal, n_blocks: int) -> StateCounts:
     return merge_states(merged)
 
 
-def _work(
-    todo: tuple[Plan, StateLayout | None], window: Window, journal: Journal, index: int
-) -> int:
+@dataclass(frozen=True, kw_only=True, eq=False)
+class _Todo:
+    """What is computed of each block: states where there are draws, intervals on request."""
+
+    plan: Plan
+    layout: StateLayout | None
+    map_samples: Samples | None
+
+    @property
+    def maps(self) -> tuple[MapKind, ...]:
+        """The maps that the run leaves."""
+        return MAPS if self.map_samples is None else (*MAPS, *INTERVAL_MAPS)
+
+
+def _todo(job: Job, plan: Plan, draws: Draws | None) -> _Todo:
+    if draws is None or job.uncertainty is None:
+        return _Todo(plan=plan, layout=None, map_samples=None)
+    wanted = job.uncertainty.maps
+    samples = first_draws(draws.samples, MAP_DRAWS) if wanted else None
+    return _Todo(plan=plan, layout=draws.layout, map_samples=samples)
+
+
+def _work(todo: _Todo, window: Window, journal: Journal, index: int) -> int:
     """Compute one block and save it; the task that dask runs."""
-    maps, sums, states = evaluate_block_states(todo[0], window, todo[1])
+    maps, sums, states = evaluate_block_states(todo.plan, window, todo.layout)
     factor = to_rate(1.0)
     arrays: dict[str, NDArray[Any]] = {
         "map_consumption": (maps.consumption * factor).astype(np.float32),
@@ -280,6 +317,10 @@ def _work(
     arrays |= {f"sum_{name}": values for name, values in sums._asdict().items()}
     if states is not None:
         arrays |= {f"state_{name}": values for name, values in states._asdict().items()}
+    if todo.map_samples is not None:
+        found = cell_intervals(todo.plan, window, todo.map_samples) * factor
+        for kind, values in zip(INTERVAL_MAPS, found, strict=True):
+            arrays[f"map_{kind.name}"] = values.astype(np.float32)
     journal.save(index, arrays)
     return window.n_cells
 
@@ -301,7 +342,7 @@ class _Watch(Callback):  # type: ignore[misc]  # dask carries no types
 
 
 def _compute_blocks(
-    what: tuple[Plan, StateLayout | None],
+    what: _Todo,
     windows: list[Window],
     journal: Journal,
     engine: Engine,
@@ -355,20 +396,21 @@ def _checked(found: Totals, folder: Path) -> dict[str, float]:
 
 
 def _write_maps(
-    plan: Plan,
+    todo: _Todo,
     windows: list[Window],
     journal: Journal,
     folder: Path,
     how: tuple[int, Progress],
 ) -> None:
     threads, progress = how
-    total = plan.grid.n_cells * len(MAPS)
+    grid = todo.plan.grid
+    total = grid.n_cells * len(todo.maps)
     progress("maps", 0, total)
     (folder / "maps").mkdir(exist_ok=True)
     task = dask.delayed(_write_one_map, pure=False, traverse=False)
     tasks = [
-        task(folder, kind, plan.grid, windows, journal, dask_key_name=f"map-{kind.name}")
-        for kind in MAPS
+        task(folder, kind, grid, windows, journal, dask_key_name=f"map-{kind.name}")
+        for kind in todo.maps
     ]
     with _Watch("maps", 0, total, progress):
         dask.compute(*tasks, scheduler="threads", num_workers=threads)
@@ -383,6 +425,18 @@ def _write_one_map(
     return write_map(folder / "maps", kind, grid, pieces, threads=2)
 
 
+def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Path) -> None:
+    """Write the tables of a job with several laws; those of an earlier run are taken away."""
+    paths = [folder / "tables" / name for name in ("laws.csv", "law_spread.csv")]
+    if not laws:
+        for path in paths:
+            path.unlink(missing_ok=True)
+            path.with_suffix(".parquet").unlink(missing_ok=True)
+        return
+    write_csv(paths[0], LAW_COLUMNS, law_rows(laws, names))
+    write_csv(paths[1], SPREAD_COLUMNS, spread_rows(laws, names))
+
+
 def _write_tables(
     found: Totals, spread: SpreadFound | None, ranking: Ranking | None, folder: Path
 ) -> None:
@@ -391,6 +445,7 @@ def _write_tables(
     tables = folder / "tables"
     write_csv(tables / "regions.csv", names(REGION_COLUMNS), region_rows(found, intervals))
     write_csv(tables / "regions_by_rock.csv", names(ROCK_COLUMNS), rock_rows(found, intervals))
+    write_csv(tables / "flags.csv", FLAG_COLUMNS, flag_rows(found))
     if spread is not None:
         write_sensitivity(tables / "sensitivity.csv", spread)
     if ranking is not None:
@@ -407,6 +462,7 @@ def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
             "drawdown_t_per_yr": float(found.drawdown.sum()),
             "valid_area_km2": float(found.valid_area.sum()),
             "area_under_flag_km2": found.flagged,
+            "between_laws": describe_alternatives(result.laws),
         },
         "checks": dict(result.checks),
         **_describe_doubts(job, result),
@@ -426,6 +482,15 @@ def _write_record(contents: Contents, result: RunResult) -> None:
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
     write_json(result.folder / "run.json", _plain(record))
+
+
+def _write_hotspots(job: Job, folder: Path) -> gpd.GeoDataFrame | None:
+    """Find the hot spots of the drawdown, where the job asks for them."""
+    if job.ranking is None or job.ranking.hotspots is None:
+        return None
+    frame = find_hotspots(folder / "maps" / "drawdown.tif", job.ranking.hotspots)
+    write_csv(folder / "tables" / "hotspots.csv", HOTSPOT_COLUMNS, hotspot_rows(frame))
+    return frame
 
 
 def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
@@ -482,6 +547,12 @@ class Inspection:
             for rock, one in self.plan.scheme.by_rock.items()
         ]
         lines += [f"note        {note}" for note in self.plan.notes]
+        lines += [
+            f"alternative {one.name}, weight {one.weight:g}: in place of "
+            f"{self.plan.scheme.name} on {', '.join(one.replaced)}"
+            + (f"; not on {', '.join(one.kept)}" if one.kept else "")
+            for one in self.plan.scheme.alternatives
+        ]
         lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
         return lines
 

@@ -185,10 +185,10 @@ def _polygons_or_wrong(spec: LayerSpec) -> bool:
 
 def _check_layers(job: Job, scheme: Scheme) -> None:
     problems = Problems()
-    for name in scheme.input_names():
+    for name in scheme.read_names():
         if name in job.layers:
             continue
-        laws = ", ".join(law.name for law in scheme.laws() if name in law.input_names)
+        laws = ", ".join(law.name for law in scheme.every_law() if name in law.input_names)
         if name == "runoff":
             lacking = needed_layers(job.water, job.layers)
             if not lacking and has_potential(job):

@@ -191,7 +191,7 @@ def ranking_lines(ranking: Ranking, *, most: int = 8) -> list[str]:
         return []
     lines: list[str] = []
     for group in groups(places):
-        lines += _group_lines(group)
+        lines += _group_lines(group, [one.region for one in ranking.places])
         last = group[-1]
         at = places.index(last)
         if at + 1 < len(places) and last.ahead_of_next is not None:
@@ -201,16 +201,16 @@ def ranking_lines(ranking: Ranking, *, most: int = 8) -> list[str]:
     return lines
 
 
-def _group_lines(group: list[Ranked]) -> list[str]:
-    """Who cannot be told apart within a group, and from whom outside it."""
-    inside = {one.region for one in group}
+def _group_lines(group: list[Ranked], order: list[str]) -> list[str]:
+    """Who cannot be told apart within a group, and from whom further down."""
+    below = order[order.index(group[-1].region) + 1 :]
     lines = [f"{_listed([one.region for one in group])} cannot be told apart"]
     if len(group) == 1:
         lines = []
     for one in group:
-        others = [name for name in one.tied_with if name not in inside]
+        others = [name for name in one.tied_with if name in below]
         if others:
-            lines.append(f"{one.region} may as well be level with {_listed(others)}")
+            lines.append(f"{one.region} cannot be told apart from {_listed(others)}")
     return lines
 
 

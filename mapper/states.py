@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import NamedTuple
 
 import numpy as np
@@ -206,22 +206,37 @@ class _Dense:
 def merge_states(parts: list[StateCounts]) -> StateCounts:
     """Add states of several blocks; whole counts, so the order does not matter."""
     key = np.concatenate([part.key for part in parts])
-    keys, number = np.unique(key, return_inverse=True)
-    area = np.zeros(keys.size, dtype=np.int64)
-    place = np.zeros((keys.size, parts[0].place.shape[1]), dtype=np.int64)
-    np.add.at(area, number, np.concatenate([part.area for part in parts]))
-    np.add.at(place, number, np.concatenate([part.place for part in parts]))
-    return StateCounts(keys, area, place)
+    order = np.argsort(key, kind="stable")
+    key = key[order]
+    first = _firsts(key)
+    if not first.size:
+        return parts[0]
+    area = np.concatenate([part.area for part in parts])[order]
+    place = np.concatenate([part.place for part in parts])[order]
+    return StateCounts(
+        key[first], np.add.reduceat(area, first), np.add.reduceat(place, first, axis=0)
+    )
+
+
+def _firsts(ordered: Ints) -> Ints:
+    """Where each value begins in an ordered array."""
+    if not ordered.size:
+        return np.empty(0, dtype=np.int64)
+    return np.flatnonzero(np.concatenate([[True], ordered[1:] != ordered[:-1]]))
 
 
 @dataclass(frozen=True, eq=False)
 class States:
-    """States as numbers: region and rock positions, area [m2], and each layer's mean."""
+    """States as numbers: region and rock positions, area [m2], and each layer's mean.
+
+    ``bins`` holds the bin of each layer, for states that can still be joined.
+    """
 
     region: Ints
     rock: Ints
     area: Floats
     inputs: Mapping[str, Floats]
+    bins: Mapping[str, Ints] = field(default_factory=dict)
 
     def of_rock(self, rock: int) -> States:
         """The states of one rock, by region."""
@@ -234,10 +249,30 @@ def to_states(counts: StateCounts, layout: StateLayout, exponent: int) -> States
     """Turn counts into area and means weighted by area."""
     rest = counts.key
     inputs: dict[str, Floats] = {}
+    bins: dict[str, Ints] = {}
     for at, name in reversed(list(enumerate(layout.names))):
         axis = AXES[name]
-        bins = rest & ((1 << axis.bits) - 1)
-        inputs[name] = axis.value(bins, counts.place[:, at] / counts.area)
+        bins[name] = rest & ((1 << axis.bits) - 1)
+        inputs[name] = axis.value(bins[name], counts.place[:, at] / counts.area)
         rest = rest >> axis.bits
     area = np.asarray(counts.area * area_step(exponent), dtype=np.float64)
-    return States(rest // layout.n_rocks, rest % layout.n_rocks, area, inputs)
+    return States(rest // layout.n_rocks, rest % layout.n_rocks, area, inputs, bins)
+
+
+def join_bins(states: States, name: str) -> States:
+    """Join each two neighbouring bins of one layer; area and means are kept."""
+    bins = {**states.bins, name: states.bins[name] >> 1}
+    columns = (*bins.values(), states.rock, states.region)  # the last is the first key
+    order = np.lexsort(columns)
+    changes = np.zeros(order.size - 1, dtype=np.bool_)
+    for column in columns:
+        changes |= np.diff(column[order]) != 0
+    first = np.flatnonzero(np.concatenate([[True], changes]))
+    area = np.add.reduceat(states.area[order], first)
+    inputs = {
+        one: np.add.reduceat((values * states.area)[order], first) / area
+        for one, values in states.inputs.items()
+    }
+    kept = order[first]
+    joined = {one: values[kept] for one, values in bins.items()}
+    return States(states.region[kept], states.rock[kept], area, inputs, joined)

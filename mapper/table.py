@@ -170,6 +170,27 @@ class Table:
             return None
         return tuple(float(one) for one in listed)
 
+    def listed(self, key: str, example: str) -> list[Any]:
+        """Take a list; an empty one where the key is absent."""
+        value = self._take(key)
+        if value is not None and not isinstance(value, list):
+            self.wrong(key, "a list", f"{key} = {example}")
+        return value if isinstance(value, list) else []
+
+    def raw(self, key: str, example: str) -> dict[str, Any]:
+        """Take a table whose keys somebody else checks."""
+        value = self._take(key)
+        if value is not None and not isinstance(value, dict):
+            self.wrong(key, "a table", f"{key} = {example}")
+        return value if isinstance(value, dict) else {}
+
+    def weight(self, key: str) -> float:
+        """Take a number above zero; 1 where the key is absent."""
+        value = self.number(key)
+        if value is not None and value <= 0:
+            self.wrong(key, "a weight above zero", f"{key} = 1.0")
+        return 1.0 if value is None else value
+
     def finish(self) -> None:
         """Note every key that was not asked for, with the nearest one that is known."""
         for key in self.values:

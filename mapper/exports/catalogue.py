@@ -2,11 +2,21 @@
 
 from __future__ import annotations
 
-import difflib
-
-from mapper.errors import LawError
-from mapper.laws import LAWS, NOT_RECOVERED, Law, Parameter
-from mapper.laws.law import LAW_INPUTS, ZERO_CELSIUS, Input, Spread
+from mapper.laws import (
+    CAP,
+    CONSUMPTION_PER_TONNE,
+    LAW_INPUTS,
+    NOT_RECOVERED,
+    UNLIMITED_ROCKS,
+    WEATHERING_LIMIT,
+    ZERO_CELSIUS,
+    Input,
+    Law,
+    Parameter,
+    Spread,
+)
+from mapper.rocks import ROCKS
+from mapper.scheme import find_laws, unknown_law
 
 _GRADE_MEANING = (
     "grades: read in the paper; quoted elsewhere from it; memory: not seen, an editable default; "
@@ -14,22 +24,67 @@ _GRADE_MEANING = (
 )
 
 
+_GIVES = {"consumption": "uptake", "relative": "rank"}
+_SHORT = {
+    # a layer's name where a line has to hold several of them
+    "runoff": "runoff",
+    "temperature": "T",
+    "vegetation": "cover",
+    "soil_shielding": "soil",
+    "erosion": "erosion",
+    "evapotranspiration": "ET",
+    "soil_co2": "soil-CO2",
+    "reference_consumption": "reference",
+    "precipitation": "rain",
+}
+
+
 def laws_lines() -> list[str]:
     """One line a law: what it needs, what it gives, for which rocks, its range and year."""
-    width = max(len(name) for name in LAWS)
-    lines = []
-    for name, law in LAWS.items():
-        needs = ", ".join(law.input_names) or "no layer"
-        gives = "mol CO2 m-2 yr-1" if law.output == "consumption" else "a relative rate"
-        rocks = ", ".join(law.rocks) if len(law.rocks) <= 3 else f"{len(law.rocks)} rocks"
-        lines.append(f"{name:{width}}  {law.year}  {law.title}")
-        ranges = "; ".join(_range(one) for one in law.inputs)
-        lines.append(f"{'':{width}}        needs {needs}; gives {gives}; for {rocks}")
-        if ranges:
-            lines.append(f"{'':{width}}        fitted in {ranges}")
-    lines += ["", "left out:", *(f"  {text}" for text in NOT_RECOVERED)]
-    lines += ["", "saprolite laws NAME shows a law in full"]
+    laws = find_laws()
+    width = max(len(name) for name in laws)
+    head = f"{'law':{width}} year {'needs':20} {'gives':6} {'rocks':20}"
+    head += f" {'T, degC':>9} {'runoff, mm yr-1':>16}"
+    lines = [head, "-" * len(head)]
+    for name, law in laws.items():
+        needs = " ".join(_SHORT[one] for one in law.input_names) or "nothing"
+        temperature = _span(law, "temperature", ZERO_CELSIUS)
+        lines.append(
+            f"{name:{width}} {law.year} {needs:20} {_GIVES[law.output]:6} {_rocks(law):20} "
+            f"{temperature:>9} {_span(law, 'runoff', 0.0):>16}"
+        )
+    lines += [
+        "",
+        "needs: T temperature; cover vegetation; soil soil_shielding; ET evapotranspiration;",
+        "       soil-CO2 soil_co2; reference reference_consumption, a map of uptake to scale",
+        "gives: uptake of CO2, short term, in mol m-2 yr-1; or a number that only ranks rocks",
+        "T and runoff: range in which the law holds; cells beyond are computed and flagged",
+        f'[law] cap = "{CAP}" holds any law at the supply of fresh rock',
+        "",
+        "left out:",
+        *(f"  {text}" for text in NOT_RECOVERED),
+        "",
+        "saprolite laws NAME              a law in full: formula, numbers, sources, grades",
+        "saprolite laws NAME --plot FILE  its response curves (.png, .svg or .pdf)",
+        "saprolite laws --compare A B --at runoff=800 temperature=12C rock=basalt",
+    ]
     return lines
+
+
+def _span(law: Law, name: str, zero: float) -> str:
+    for one in law.inputs:
+        if one.name == name:
+            return f"{one.low - zero:g}..{one.high - zero:g}"
+    return "-"
+
+
+def _rocks(law: Law) -> str:
+    if len(law.rocks) <= 2:
+        return ", ".join(law.rocks)
+    kinds = [ROCKS[rock].kind for rock in law.rocks]
+    if all(kind == "silicate" for kind in kinds):
+        return f"{len(kinds)} silicate rocks"
+    return f"{len(kinds)} rocks"
 
 
 def _range(one: Input) -> str:
@@ -44,16 +99,13 @@ def law_lines(name: str) -> list[str]:
 
     Raises LawError where there is none of that name.
     """
-    if name not in LAWS:
-        near = difflib.get_close_matches(name, LAWS, n=1, cutoff=0.0)[0]
-        raise LawError(
-            f"there is no law {name!r}", where="saprolite laws", fix=f"saprolite laws {near}"
-        )
-    law = LAWS[name]
+    if name == CAP:
+        return _cap_lines()
+    law = find_named(name, where="saprolite laws")
     lines = [f"{law.name}: {law.title} ({law.year})", law.summary, "", f"  {law.formula}", ""]
-    lines += ["inputs"]
+    lines += ["inputs, with the range in which the law holds"]
     lines += [
-        f"  {_range(one)}  ({one.range_source}; {one.range_grade})" for one in law.inputs
+        f"  {_range(one)}  ({one.range_source}; grade: {one.range_grade})" for one in law.inputs
     ] or ["  none"]
     lines += ["", "parameters"]
     for parameter in law.parameters:
@@ -67,6 +119,36 @@ def law_lines(name: str) -> list[str]:
     return lines
 
 
+def find_named(name: str, *, where: str) -> Law:
+    """Find a law of the catalogue or of another package.
+
+    Raises LawError where there is none of that name.
+    """
+    laws = find_laws()
+    if name not in laws:
+        raise unknown_law(name, laws, where=where, fix="{}")
+    return laws[name]
+
+
+def _cap_lines() -> list[str]:
+    """The supply limit, which is no law of its own but may hold any."""
+    return [
+        f"{CAP}: the most that the supply of fresh rock allows (2012)",
+        f'holds any law: [law] cap = "{CAP}"; its numbers are set in [law.parameters]',
+        "",
+        "  F = min(F of the law; c W_max)",
+        "",
+        "parameters",
+        *_parameter_lines(WEATHERING_LIMIT),
+        *_parameter_lines(CONSUMPTION_PER_TONNE),
+        "",
+        f"not held: {', '.join(UNLIMITED_ROCKS)}, unless weathering_limit.by_rock names them",
+        "cells that the limit holds carry a flag, and tables/flags.csv has their area",
+        "",
+        _GRADE_MEANING,
+    ]
+
+
 def _parameter_lines(one: Parameter) -> list[str]:
     default = "" if one.default is None else f" = {one.default:g}"
     unit = "" if one.unit == "1" else f" {one.unit}"
@@ -75,7 +157,7 @@ def _parameter_lines(one: Parameter) -> list[str]:
     lines = [
         head,
         f"      range {one.low:g}..{one.high:g}{spread}",
-        f"      {one.source} ({one.grade})",
+        f"      {one.source} (grade: {one.grade})",
     ]
     if one.by_rock:
         values = ", ".join(f"{rock} {value:g}" for rock, value in one.by_rock.items())

@@ -129,11 +129,11 @@ def stretch(values: NDArray[np.floating], largest: float | None = None) -> Stret
 
 
 def _round_up(value: float) -> float:
-    """The next of 1, 1.5, 2, 3, 4, 5, 6, 8 times a power of ten."""
+    """The next of 1, 1.2, 1.5, 2, 2.5, 3, 4, 5, 6, 8 times a power of ten."""
     if value <= 0.0:
         return 0.0
     power = float(10.0 ** np.floor(np.log10(value)))
-    steps = (1.0, 1.5, 2.0, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0)
+    steps = (1.0, 1.2, 1.5, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0, 10.0)
     return next(step * power for step in steps if step * power >= value * (1 - 1e-9))
 
 

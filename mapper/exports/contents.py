@@ -22,6 +22,15 @@ OTHER_ROWS = ("outside", "all")
 SET_BY_JOB = "job"
 """The grade of a number that the job sets; the others are those of `mapper.laws.law.Grade`."""
 
+GRADE_WORDS: Mapping[str, str] = {
+    "read": "read in the source",
+    "quoted": "quoted from the source elsewhere",
+    "memory": "from memory, not seen",
+    "computed": "computed from the formula",
+    "project": "this project’s own choice",
+    SET_BY_JOB: "set by the job",
+}
+
 _SORTED_FIRST = ("drawdown", "consumption")
 
 

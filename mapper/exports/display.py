@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -17,12 +17,14 @@ from mapper.engine import Plan
 from mapper.exports.colours import Stretch, stretch
 from mapper.exports.contents import Contents
 from mapper.grid import Grid, Window, parse_crs, transformer
+from mapper.layers.lithology import RockCells
 
 DISPLAY_CELLS = 640_000
 LONGEST_SIDE = 1200
 ROCK_MAP_CELLS = 12_000_000
 """Above this many cells the rocks are not read a second time for the page."""
 NO_ROCK = 255
+BAND_CELLS = 120_000
 OUTLINE_POINTS = 60_000
 
 
@@ -95,13 +97,32 @@ def dominant_rock(plan: Plan, shape: tuple[int, int]) -> NDArray[np.uint8] | Non
     rows = _middles(grid.n_rows, shape[0])
     cols = _middles(grid.n_cols, shape[1])
     out = np.full((rows.size, cols.size), NO_ROCK, dtype=np.uint8)
-    for at, row in enumerate(rows):  # one row of cells at a time: the grid may be any size
-        rocks = plan.lithology.rock_cells(Window(int(row), 0, 1, grid.n_cols))
-        order = np.lexsort((-rocks.rock, rocks.share))  # the largest share of a cell comes last
-        line = np.full(grid.n_cols, NO_ROCK, dtype=np.uint8)
-        line[rocks.cell[order]] = rocks.rock[order]
-        out[at] = line[cols]
+    for first, window in _bands(grid, rows):
+        held = rows[first:][rows[first:] < window.row_stop] - window.row
+        band = _most_of_cell(plan.lithology.rock_cells(window), window)
+        out[first : first + held.size] = band[np.ix_(held, cols)]
     return out
+
+
+def _bands(grid: Grid, rows: NDArray[np.int64]) -> Iterator[tuple[int, Window]]:
+    """Windows of whole rows that together hold the rows asked for, none above `BAND_CELLS`.
+
+    Each comes with the position of its first row in ``rows``; memory does not grow with the grid.
+    """
+    most = max(1, BAND_CELLS // grid.n_cols)
+    first = 0
+    while first < rows.size:
+        stop = int(np.searchsorted(rows, rows[first] + most))
+        yield first, Window(int(rows[first]), 0, int(rows[stop - 1] - rows[first]) + 1, grid.n_cols)
+        first = stop
+
+
+def _most_of_cell(rocks: RockCells, window: Window) -> NDArray[np.uint8]:
+    """The rock of the largest share; the first of the list where two are alike."""
+    order = np.lexsort((-rocks.rock, rocks.share))  # the largest share of a cell comes last
+    band = np.full(window.n_cells, NO_ROCK, dtype=np.uint8)
+    band[rocks.cell[order]] = rocks.rock[order]
+    return band.reshape(window.shape)
 
 
 def _middles(n: int, n_display: int) -> NDArray[np.int64]:

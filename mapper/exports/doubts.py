@@ -14,6 +14,14 @@ from mapper.ranking import Candidates, Ranking, rank_regions, ranking_columns, r
 from mapper.uncertainty.sensitivity import SENSITIVITY_COLUMNS, held_draws, sensitivity_rows
 from mapper.uncertainty.spread import MOST_APART, SpreadFound
 
+NOT_DRAWN = (
+    "the choice of law: published laws may lie outside the intervals of one law",
+    "errors of a layer that differ from place to place: a layer's spread moves the whole map",
+    "runoff derived from precipitation does not follow a temperature bias",
+    "lithology, legend and region borders",
+)
+"""What the intervals leave out; the record says so."""
+
 
 def write_sensitivity(path: Path, spread: SpreadFound) -> None:
     """Write ``sensitivity.csv``."""
@@ -80,6 +88,7 @@ def describe_spread(spec: UncertaintySpec, spread: SpreadFound) -> dict[str, Any
             for one in doubts.quantities
         ],
         "taken_as_certain": list(doubts.certain),
+        "not_drawn": list(NOT_DRAWN),
         "correlations": [
             {"between": list(one.between), "value": one.value} for one in spec.correlations
         ],

@@ -17,6 +17,7 @@ from rasterio.windows import Window as RasterWindow
 from mapper.engine import FLAG_MEANING
 from mapper.exports.files import whole_file
 from mapper.grid import Grid, Window
+from mapper.uncertainty.cells import MAP_DRAWS
 
 RATE_UNIT = "t CO2 km-2 yr-1"
 COG_BLOCK = 512
@@ -74,6 +75,26 @@ MAPS: tuple[MapKind, ...] = (
         tags={f"bit_{int(flag)}": meaning for flag, meaning in FLAG_MEANING.items()},
     ),
 )
+
+
+def _interval_map(level: str, percent: int) -> MapKind:
+    return MapKind(
+        name=f"drawdown_{level}",
+        dtype="float32",
+        nodata=float("nan"),
+        unit=RATE_UNIT,
+        description=f"CO2 drawn down, long term: {percent} % of the draws lie below",
+        overviews="NEAREST",  # a mean of quantiles is no quantile
+        tags={
+            "long_name": f"CO2 that stays out of the atmosphere, long term: {percent} % quantile "
+            f"of the first {MAP_DRAWS} draws, each cell for itself; cells do not add up to an area",
+            "caution": _CAUTION,
+        },
+    )
+
+
+INTERVAL_MAPS: tuple[MapKind, ...] = (_interval_map("p05", 5), _interval_map("p95", 95))
+"""Maps that a job with ``[uncertainty] maps = true`` gets besides."""
 
 
 def write_map(

@@ -149,8 +149,18 @@ def _scale_bar(axes: Any, display: Display) -> None:
     length = round_length(wide / 4)
     share = length / wide
     where = {"transform": axes.transAxes, "color": INK, "zorder": 5}
+    plate = {"facecolor": "white", "alpha": 0.75, "edgecolor": "none", "pad": 1.5}
     axes.plot([0.03, 0.03 + share], [0.045, 0.045], linewidth=2.2, solid_capstyle="butt", **where)
-    axes.text(0.03 + share / 2, 0.062, f"{length:g} km", ha="center", va="bottom", size=7, **where)
+    axes.text(
+        0.03 + share / 2,
+        0.062,
+        f"{length:g} km",
+        ha="center",
+        va="bottom",
+        size=7,
+        bbox=plate,
+        **where,
+    )
 
 
 def _write_texts(
@@ -220,10 +230,10 @@ def _draw_key(axes: Any, classes: list[tuple[str, str]], *, wrap: int, step: flo
 def _legend(shown: DisplayMap) -> Any:
     if shown.stretch is None:
         classes = _classes(shown)
-        figure = _figure(3.2, 0.2 + 0.3 * len(classes))
+        figure = _figure(3.2, 0.5 + 0.3 * len(classes))
         axes = figure.add_axes((0.02, 0.03, 0.96, 0.94))
         axes.set_axis_off()
-        _draw_key(axes, classes, wrap=52, step=1.0 / len(classes))
+        _draw_key(axes, classes, wrap=52, step=1.0 / max(len(classes), 1))
         return figure
     figure = _figure(1.7, 3.0)
     figure.text(0.12, 0.965, shown.name, size=8.5, weight="bold", color=INK, va="top")

@@ -103,7 +103,18 @@ def describe_plan(plan: Plan) -> dict[str, Any]:
         },
         "notes": list(plan.notes),
         "water_method": plan.water_method if "runoff" not in plan.layers else "runoff given",
-        "laws": {rock: _describe_law(one) for rock, one in plan.scheme.by_rock.items()},
+        "laws": {rock: _describe_law(one, rock) for rock, one in plan.scheme.by_rock.items()},
+        "alternatives": [
+            {
+                "law": other.name,
+                "weight": other.weight,
+                "rocks_left_to_the_default": list(other.kept),
+                "in_place_of_the_default": {
+                    rock: _describe_law(one, rock) for rock, one in other.replaced.items()
+                },
+            }
+            for other in plan.scheme.alternatives
+        ],
         "regions": None
         if plan.regions is None
         else {"count": len(plan.regions.names), "notes": list(plan.regions.notes)},
@@ -123,15 +134,18 @@ def _describe_layer(layer: Layer) -> dict[str, Any]:
     }
 
 
-def _describe_law(one: RockLaw) -> dict[str, Any]:
+def _describe_law(one: RockLaw, rock: str) -> dict[str, Any]:
+    """A rock's law; "modified" says that it is not as published, "changed" what is not."""
     return {
         "law": one.law.name,
+        "formula": one.law.formula,
         "reference": one.law.reference,
         "modified": bool(one.changed),
         "changed": list(one.changed),
         "parameters": {
             parameter.name: {
                 "value": one.values[parameter.name],
+                "published": parameter.value(rock),
                 "unit": parameter.unit,
                 "source": parameter.source,
                 "grade": parameter.grade,

@@ -9,9 +9,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import SQUARE_METRES_PER_KM2, to_rate, tonnes_per_mole
-from mapper.engine import KEPT, OUTSIDE_RANGE, BlockSums, Flag
+from mapper.engine import COUNTED_FLAGS, FLAG_MEANING, KEPT, OUTSIDE_RANGE, BlockSums, Flag
 from mapper.rocks import ROCK_NAMES
-from mapper.sums import totals
+from mapper.sums import Counts, totals
 from mapper.uncertainty.intervals import LEVEL_NAMES, LEVELS, Intervals
 
 Floats = NDArray[np.float64]
@@ -25,11 +25,25 @@ REGION_COLUMNS = (
     "consumption_t_per_km2_yr",
     "drawdown_t_per_km2_yr",
     "outside_law_range_km2",
+    "capped_km2",
 )
 ROCK_COLUMNS = ("region", "rock", *REGION_COLUMNS[1:])
 DRAWN_COLUMNS = REGION_COLUMNS[3:7]
 """Columns that a run with draws gives with their intervals."""
+FLAG_COLUMNS = ("cause", "meaning", "area_km2", "share_of_mapped_rock")
 UNMAPPED = "unmapped"
+
+OUTSIDE = "outside_law_range"
+CAUSES: dict[str, str] = {
+    **{
+        OUTSIDE if flag == OUTSIDE_RANGE else (flag.name or "").lower(): FLAG_MEANING.get(
+            flag, "any layer outside the law's range: the three above, ground counted once"
+        )
+        for flag in COUNTED_FLAGS
+    },
+    "no_data": "no result: a layer that the law reads has no data",
+}
+"""Why ground is counted in ``flags.csv``, and what it means."""
 
 
 @dataclass(frozen=True)
@@ -48,6 +62,7 @@ class Totals:
     consumption: Floats
     drawdown: Floats
     outside_range: Floats
+    capped: Floats
     flagged: dict[str, float]
     cells: Floats
 
@@ -57,8 +72,8 @@ def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
     tonnes = tonnes_per_mole("t CO2")
     km2 = 1.0 / SQUARE_METRES_PER_KM2
     consumption = totals(sums.consumption, exponent) * tonnes
-    flags = list(Flag)
-    outside = sum(sums.flagged[flags.index(flag)] for flag in Flag if flag & OUTSIDE_RANGE)
+    outside = sums.flagged[COUNTED_FLAGS.index(OUTSIDE_RANGE)]
+    capped = sums.flagged[COUNTED_FLAGS.index(Flag.CAPPED)]
     cells = totals(sums.total, exponent)
     return Totals(
         names=(*names, "outside"),
@@ -67,11 +82,11 @@ def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
         valid_area=totals(sums.valid_area, exponent) * km2,
         consumption=consumption,
         drawdown=consumption * KEPT,
-        outside_range=totals(np.asarray(outside), exponent) * km2,
+        outside_range=totals(outside, exponent) * km2,
+        capped=totals(capped, exponent) * km2,
         flagged={
-            flag.name.lower(): float(totals(sums.flagged[at].sum(axis=(0, 1)), exponent)) * km2
-            for at, flag in enumerate(flags)
-            if flag.name
+            cause: float(totals(counts.sum(axis=(0, 1)), exponent)) * km2
+            for cause, counts in _by_cause(sums).items()
         },
         cells=cells * np.array([km2, tonnes, tonnes]),
     )
@@ -91,6 +106,26 @@ def with_intervals(columns: tuple[str, ...]) -> tuple[str, ...]:
         if one in DRAWN_COLUMNS:
             wide.extend(f"{one}_{level}" for level in LEVEL_NAMES)
     return tuple(wide)
+
+
+def _by_cause(sums: BlockSums) -> dict[str, Counts]:
+    """Counts of area by cause; what has neither a result nor another cause has no data."""
+    named = {
+        OUTSIDE if flag == OUTSIDE_RANGE else (flag.name or "").lower(): sums.flagged[at]
+        for at, flag in enumerate(COUNTED_FLAGS)
+    }
+    missing = sums.rock_area - sums.valid_area - named["not_finite"]
+    named["no_data"] = missing
+    return {cause: named[cause] for cause in CAUSES}
+
+
+def flag_rows(found: Totals) -> list[list[Any]]:
+    """Rows of ``flags.csv``: the area under each cause, and its share of the mapped rock."""
+    mapped = float(found.rock_area.sum())
+    return [
+        [cause, CAUSES[cause], area, area / mapped if mapped else float("nan")]
+        for cause, area in found.flagged.items()
+    ]
 
 
 def region_rows(found: Totals, intervals: Intervals | None = None) -> list[list[Any]]:
@@ -114,7 +149,7 @@ def _row(
         for at, amount in enumerate(amounts):
             several = [] if spread is None else [float(one) for one in spread[at]]
             cells += [_over(one, divisor) for one in (amount, *several)]
-    return [*cells, float(found.outside_range[part].sum())]
+    return [*cells, float(found.outside_range[part].sum()), float(found.capped[part].sum())]
 
 
 def _over(amount: float, divisor: float) -> float:
@@ -147,7 +182,7 @@ def _rocks_of(
     if unmapped > 1e-9 * max(area, 1e-300):
         each = 1 if spreads is None else 1 + len(LEVELS)
         amounts = [0.0] * (2 * each) + [float("nan")] * (2 * each)
-        rows.append([name, UNMAPPED, unmapped, 0.0, *amounts, 0.0])
+        rows.append([name, UNMAPPED, unmapped, 0.0, *amounts, 0.0, 0.0])
     rows.append(_row([name, "all"], area, found, part, None if spreads is None else spreads[1]))
     return rows
 

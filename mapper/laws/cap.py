@@ -7,13 +7,18 @@ from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from mapper.laws.law import Floats, Law, Parameter, Spread, Values
 from mapper.laws.rock_groups import CARBONATE_ROCKS
 
+CAP = "dixon-von-blanckenburg-2012"
+"""The name by which a job asks for the supply limit."""
+
 SQUARE_METRES_PER_KM2 = 1e6
 SILICATE_LIMIT = 150.0  # t km-2 yr-1, Dixon & von Blanckenburg 2012, read
 NO_LIMIT = 1e9  # t km-2 yr-1: rock that dissolves whole is not held back by its supply
+UNLIMITED_ROCKS = (*CARBONATE_ROCKS, "evaporite")
 
 WEATHERING_LIMIT = Parameter(
     name="weathering_limit",
@@ -101,19 +106,24 @@ class Capped:
         whole = signature.replace(parameters=[*signature.parameters.values(), *added])
         object.__setattr__(self, "__signature__", whole)
 
-    def __call__(
+    def __call__(self, *layers: Floats, **parameters: Values) -> Floats:
+        """Evaluate the law and hold it at the limit [mol m-2 yr-1]."""
+        return self.hold(*layers, **parameters)[0]
+
+    def hold(
         self,
         *layers: Floats,
         weathering_limit: Values,
         limit_consumption_per_tonne: Values,
         **parameters: Values,
-    ) -> Floats:
-        """Evaluate the law and hold it at the limit [mol m-2 yr-1]."""
-        return cap_consumption(
-            self.function(*layers, **parameters),
-            weathering_limit=weathering_limit,
-            limit_consumption_per_tonne=limit_consumption_per_tonne,
-        )
+    ) -> tuple[Floats, NDArray[np.bool_]]:
+        """Evaluate the law; gives the rate held at the limit, and where the limit held it."""
+        free = self.function(*layers, **parameters)
+        limits = {
+            "weathering_limit": weathering_limit,
+            "limit_consumption_per_tonne": limit_consumption_per_tonne,
+        }
+        return cap_consumption(free, **limits), np.asarray(free > supply_limit(**limits))
 
 
 def cap_law(law: Law) -> Law:
@@ -123,8 +133,7 @@ def cap_law(law: Law) -> Law:
     """
     if law.output != "consumption":
         raise ValueError(f"law {law.name!r} only ranks: there is no uptake to hold at a limit")
-    unlimited = (*CARBONATE_ROCKS, "evaporite")
-    limits = {rock: NO_LIMIT if rock in unlimited else SILICATE_LIMIT for rock in law.rocks}
+    limits = {rock: NO_LIMIT if rock in UNLIMITED_ROCKS else SILICATE_LIMIT for rock in law.rocks}
     limit = replace(WEATHERING_LIMIT, default=None, by_rock=limits)
     return replace(
         law,

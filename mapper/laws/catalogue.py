@@ -3,44 +3,39 @@
 from __future__ import annotations
 
 import difflib
+import importlib
+import pkgutil
 from collections.abc import Mapping
 from importlib.metadata import entry_points
+from pathlib import Path
 from types import MappingProxyType
 
-from mapper.laws.amiotte_suchet import AMIOTTE_SUCHET_1995
-from mapper.laws.carbonate import WHITE_1984, WHITE_1984_BROOK
-from mapper.laws.dessert import DESSERT_2003
-from mapper.laws.feedback import BERNER_1994, BERNER_KOTHAVALA_2001, WALKER_1981
-from mapper.laws.granite import OLIVA_2003, WHITE_BLUM_1995
-from mapper.laws.hartmann import HARTMANN_2014_FORM
 from mapper.laws.law import Law
-from mapper.laws.maher import MAHER_CHAMBERLAIN_2014
-from mapper.laws.minerals import PALANDRI_KHARAKA_2004
-from mapper.laws.product import PRODUCT
-from mapper.laws.romero_mujalli import ROMERO_MUJALLI_2019
-from mapper.laws.west import WEST_2012
 
 ENTRY_POINT_GROUP = "saprolite.laws"
+FIRST = "product"  # the law that a job takes where it names none
 
-LAWS: Mapping[str, Law] = MappingProxyType(
-    {
-        "product": PRODUCT,
-        "amiotte-suchet-1995": AMIOTTE_SUCHET_1995,
-        "hartmann-2014-form": HARTMANN_2014_FORM,
-        "dessert-2003": DESSERT_2003,
-        "white-blum-1995": WHITE_BLUM_1995,
-        "oliva-2003": OLIVA_2003,
-        "west-2012": WEST_2012,
-        "maher-chamberlain-2014": MAHER_CHAMBERLAIN_2014,
-        "white-1984": WHITE_1984,
-        "white-1984-brook": WHITE_1984_BROOK,
-        "romero-mujalli-2019": ROMERO_MUJALLI_2019,
-        "walker-1981": WALKER_1981,
-        "berner-1994": BERNER_1994,
-        "berner-kothavala-2001": BERNER_KOTHAVALA_2001,
-        "palandri-kharaka-2004": PALANDRI_KHARAKA_2004,
-    }
-)
+
+def collect_laws(folder: Path, package: str) -> Mapping[str, Law]:
+    """Collect every `Law` that a module of a folder holds at its top level.
+
+    Nothing registers itself: a module states its laws, and they are read from it here. The law
+    that is a job's default comes first, the others by year and name; a name that two laws have
+    raises ValueError.
+    """
+    found: dict[str, Law] = {}
+    for info in pkgutil.iter_modules([str(folder)]):
+        if f"{package}.{info.name}" == __name__:
+            continue
+        module = importlib.import_module(f"{package}.{info.name}")
+        for law in vars(module).values():
+            if isinstance(law, Law) and found.setdefault(law.name, law) is not law:
+                raise ValueError(f"two laws are called {law.name!r}, one in {module.__name__}")
+    order = sorted(found.values(), key=lambda law: (law.name != FIRST, law.year, law.name))
+    return MappingProxyType({law.name: law for law in order})
+
+
+LAWS: Mapping[str, Law] = collect_laws(Path(__file__).parent, __package__ or "mapper.laws")
 """The laws that come with this package, by name."""
 
 NOT_RECOVERED: tuple[str, ...] = (

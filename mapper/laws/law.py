@@ -83,7 +83,7 @@ class Parameter:
 
 @dataclass(frozen=True, kw_only=True)
 class Input:
-    """A layer that a law reads, with the range that the law was fitted in."""
+    """A layer that a law reads, with the range in which the law holds."""
 
     name: str
     low: float

@@ -141,9 +141,19 @@ def propagate(
     drawdown = consumption * kept[rock]
     for name, factor in samples.kept.items():
         drawdown[:, rock == ROCK_NAMES.index(name)] *= factor[1:]
-    over_states = np.zeros_like(central)
-    over_states[region, rock] = first
-    return Drawn(region, rock, consumption, drawdown, n_regions, _apart(over_states, central))
+    found = np.zeros_like(central)
+    found[region, rock] = first
+    return Drawn(region, rock, consumption, drawdown, n_regions, _apart(found, central))
+
+
+def over_states(scheme: Scheme, states: States, central: Floats) -> float:
+    """Largest relative distance of the central totals over states from those over cells."""
+    none = Samples(parameters={}, layers={}, kept={}, held={}, n_draws=0)
+    region, rock = np.nonzero(central)
+    found = np.zeros_like(central)
+    totals = _evaluate(scheme, states, none, (region, rock), one_by_one)[0]
+    found[region, rock] = totals * tonnes_per_mole()
+    return max(_apart(found, central).values())
 
 
 def _not_finite(values: Floats, rock: Ints) -> LawError:
@@ -156,13 +166,13 @@ def _not_finite(values: Floats, rock: Ints) -> LawError:
     )
 
 
-def _apart(over_states: Floats, central: Floats) -> dict[str, float]:
+def _apart(found: Floats, central: Floats) -> dict[str, float]:
     """Largest relative distance of totals over states from totals over cells."""
     return {
-        "all": _largest(over_states.sum(keepdims=True), central.sum(keepdims=True)),
-        "regions": _largest(over_states.sum(axis=1), central.sum(axis=1)),
-        "rocks": _largest(over_states.sum(axis=0), central.sum(axis=0)),
-        "regions_by_rock": _largest(over_states, central),
+        "all": _largest(found.sum(keepdims=True), central.sum(keepdims=True)),
+        "regions": _largest(found.sum(axis=1), central.sum(axis=1)),
+        "rocks": _largest(found.sum(axis=0), central.sum(axis=0)),
+        "regions_by_rock": _largest(found, central),
     }
 
 

@@ -12,7 +12,8 @@ from pathlib import Path
 import pytest
 
 import mapper.laws
-from mapper.laws import LAWS, NOT_RECOVERED, catalogue, find_law, find_response, load_laws
+from mapper.laws import LAWS, NOT_RECOVERED, Law, catalogue, find_law, find_response, load_laws
+from mapper.laws.catalogue import collect_laws
 from mapper.rocks import ROCKS
 
 MODULES = [f"mapper.laws.{one.name}" for one in pkgutil.iter_modules(mapper.laws.__path__)]
@@ -55,7 +56,7 @@ def test_the_laws_import_numpy_and_one_another_alone(name):
         for alias in node.names
     }
     standard = {"__future__", "collections.abc", "dataclasses", "types", "typing", "difflib"}
-    standard |= {"inspect", "math", "importlib.metadata"}
+    standard |= {"inspect", "math", "importlib", "importlib.metadata", "pathlib", "pkgutil"}
     beyond = {one for one in imported if not one.startswith("mapper.laws")} - standard
     assert beyond <= {"numpy", "numpy.typing"}
 
@@ -79,6 +80,37 @@ def test_an_unknown_law_names_the_nearest_and_all():
 def test_an_unknown_response_lists_those_there_are():
     with pytest.raises(KeyError, match="linear, power, saturating"):
         find_response("runoff", "cubic")
+
+
+def test_every_law_of_a_module_is_in_the_catalogue():
+    stated = {
+        law.name
+        for name in MODULES
+        for law in vars(importlib.import_module(name)).values()
+        if isinstance(law, Law)
+    }
+    assert stated == set(LAWS)
+
+
+def test_the_default_comes_first_and_the_others_by_year():
+    first, *others = LAWS.values()
+    assert first.name == "product"
+    assert [law.year for law in others] == sorted(law.year for law in others)
+
+
+def test_two_laws_of_one_name_are_refused(tmp_path, monkeypatch):
+    package = tmp_path / "some_laws"
+    package.mkdir()
+    (package / "__init__.py").touch()
+    text = """
+from dataclasses import replace
+from mapper.laws.dessert import DESSERT_2003
+OTHER = replace(DESSERT_2003, title="another")
+"""
+    (package / "first.py").write_text(text, encoding="utf-8")
+    monkeypatch.syspath_prepend(tmp_path)
+    with pytest.raises(ValueError, match=r"two laws are called 'dessert-2003', one in some_laws"):
+        collect_laws(package, "some_laws")
 
 
 def test_a_package_may_add_a_law(monkeypatch):

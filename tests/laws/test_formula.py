@@ -285,15 +285,32 @@ def test_a_range_is_kept_in_the_unit_in_which_the_layer_arrives():
     ],
 )
 def test_a_bad_declaration_is_refused_with_what_to_write(inputs, parameters, kind, says):
-    with pytest.raises(kind, match=says) as caught:
+    with pytest.raises(MapperError, match=says) as caught:
         make("a * runoff", inputs, parameters)
-    assert caught.value.fix
+    first = getattr(caught.value, "problems", (caught.value,))[0]
+    assert isinstance(first, kind)
+    assert first.fix
 
 
 def test_all_bad_declarations_are_told_at_once():
     with pytest.raises(ManyProblemsError, match=r"(?s)'rain'.*no unit is given") as caught:
         make("a * rain", {"rain": "mm"}, {"a": {"value": 1}})
     assert len(caught.value.problems) == 2
+
+
+def test_names_that_nobody_declared_are_told_beside_bad_units():
+    with pytest.raises(ManyProblemsError) as caught:
+        make("a * rainfall + b", RUNOFF, {"a": {"value": 1, "unit": "furlong"}})
+    said = [one.problem for one in caught.value.problems]
+    assert len(said) == 3
+    assert "furlong" in said[0]
+    assert said[1:] == ["'rainfall' is not declared", "'b' is not declared"]
+
+
+def test_every_name_that_nobody_declared_is_told():
+    with pytest.raises(ManyProblemsError) as caught:
+        make("c * runof + d", RUNOFF, CONCENTRATION)
+    assert [one.where[-8:] for one in caught.value.problems] == ["column 1", "column 5", "olumn 13"]
 
 
 def test_a_rock_without_a_value_is_refused():
@@ -318,6 +335,6 @@ WORDS = ["a", "runoff", "exp", "log", "minimum", "(", ")", "+", "-", "*", "/", "
 def test_any_text_is_a_law_or_a_refusal(text):
     try:
         law = make(text)
-    except LawError:
+    except (LawError, ManyProblemsError):
         return
     assert rate_of(law, [0.0, 1000.0]).shape == (2,)

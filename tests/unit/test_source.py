@@ -3,10 +3,12 @@
 import numpy as np
 import pytest
 import rasterio
+import shapely
 import xarray as xr
 
 from mapper.errors import FileFormatError, GridError, MissingFileError, ValuesError
 from mapper.job import LayerSpec
+from mapper.layers.axis import plan_axis
 from mapper.layers.layer import open_source
 from mapper.layers.source import file_kind, runs
 from tests.making import EQUAL_AREA, write_netcdf, write_polygons, write_raster
@@ -17,8 +19,6 @@ def opened(path, name="temperature", **about):
 
 
 def whole(source):
-    from mapper.layers.axis import plan_axis
-
     rows = plan_axis(source.y, source.y.edges, source.y.centres, "nearest", sphere=False)
     cols = plan_axis(source.x, source.x.edges, source.x.centres, "nearest", sphere=False)
     raw, valid = source.read(rows, cols)
@@ -170,8 +170,6 @@ def test_a_file_that_was_cut_short_is_refused(tmp_path):
 
 
 def test_a_polygon_file_is_no_grid(tmp_path):
-    import shapely
-
     path = write_polygons(tmp_path / "p.gpkg", {"a": shapely.box(0, 0, 1, 1)})
     with pytest.raises(ValuesError, match="the file holds vectors, and a grid is needed"):
         opened(path)

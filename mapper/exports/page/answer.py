@@ -6,6 +6,9 @@ from mapper.exports.contents import Contents
 from mapper.exports.page.markup import paragraph, percent
 from mapper.exports.words import about, escape, isolate, number, shorten
 
+NARROW = "\u00a0"
+WIDTH = f"90{NARROW}% interval"
+
 
 def head(contents: Contents) -> str:
     """Title, the answer in one sentence with its interval, and four figures."""
@@ -18,18 +21,18 @@ def head(contents: Contents) -> str:
     )
 
 
-def interval(row: dict[str, float], column: str, digits: int = 3) -> str:
+def interval(row: dict[str, float], column: str, *, link: str = " to ") -> str:
     """The 90 % interval of a column as text; empty where there were no draws."""
     low, high = row.get(f"{column}_p05"), row.get(f"{column}_p95")
     if low is None or high is None or low != low or high != high:  # noqa: PLR0124 - NaN
         return ""
-    return f"{about(low, digits)} to {about(high, digits)}"
+    return f"{about(low)}{link}{about(high)}"
 
 
 def _answer(contents: Contents) -> str:
     row = contents.regions.by_region["all"]
     span = interval(row, "drawdown_t_per_yr")
-    sure = f" (90 % interval {span})" if span else ""
+    sure = f" ({WIDTH} {span.replace(' ', NARROW)})" if span else ""
     return (
         "Rock weathering here keeps about "
         f"<strong>{about(row['drawdown_t_per_yr'])} t of CO<sub>2</sub> a year</strong>{sure} "
@@ -40,9 +43,11 @@ def _answer(contents: Contents) -> str:
 def _second(contents: Contents) -> str:
     row = contents.regions.by_region["all"]
     span = interval(row, "consumption_t_per_yr")
-    short = about(row["consumption_t_per_yr"]) + (f" (90 % interval {span})" if span else "")
+    short = f"{about(row['consumption_t_per_yr'])}{NARROW}t" + (
+        f" ({WIDTH} {span})" if span else ""
+    )
     text = (
-        f"In the short term it takes up {short} t; the rest returns to the air when "
+        f"In the short term it takes up {short}; the rest returns to the air when "
         "carbonate forms in the sea. "
     )
     if not contents.has_draws:

@@ -34,11 +34,13 @@ from mapper.exports.display import (
     ticks,
 )
 from mapper.exports.page.markup import paragraph
+from mapper.exports.page.ranking import ties
 from mapper.exports.pictures import scale_index
 from mapper.exports.words import escape, number, pretty_unit
 from mapper.rocks import ROCK_NAMES
 
 WIDTH = 1000.0
+MOST_SPOTS = 500
 _KEPT_BITS = np.uint32(0xFFFFF800)  # 12 bits of mantissa: values right to 1 in 4000
 _LABELS = {
     "drawdown": "Drawdown, long term",
@@ -65,6 +67,7 @@ def map_figure(contents: Contents, display: Display) -> str:
     images = "".join(
         _image(display.maps[name], height, first=not at) for at, name in enumerate(names)
     )
+    buttons += _spots_button(contents)
     legends = "".join(_legend(display.maps[name], first=not at) for at, name in enumerate(names))
     return (
         '<figure class="map" id="map">'
@@ -76,6 +79,7 @@ def map_figure(contents: Contents, display: Display) -> str:
         'aria-label="Map. Arrow keys move the reading point, plus and minus zoom, 0 shows the '
         'whole map." aria-describedby="reading">'
         f"{images}{_graticule(display, height)}{_region_paths(contents, display, height)}"
+        f"{_spot_paths(contents, display, height)}"
         '<g id="cross" aria-hidden="true"><path d="M-12 0H12M0-12V12"/></g></svg>'
         f"{_scale_bar(display)}</div>{_tick_labels(display)}"
         '<div class="zoom" role="group" aria-label="Zoom">'
@@ -172,6 +176,7 @@ def map_data(contents: Contents, display: Display) -> dict[str, Any]:
             }
             for name, shown in display.maps.items()
         ],
+        "ties": ties(contents),
         "rocks": list(ROCK_NAMES),
         "flags": [[int(flag), FLAG_LABEL[flag]] for flag in Flag],
     }
@@ -257,22 +262,38 @@ def _scale_bar(display: Display) -> str:
 
 
 def _region_paths(contents: Contents, display: Display, height: float) -> str:
+    drawn = (_path(shape, display, height) for shape in outlines(contents))
+    paths = "".join(f'<path data-r="{at}" d="{one}"/>' for at, one in enumerate(drawn) if one)
+    return f'<g id="shapes" aria-hidden="true">{paths}</g>'
+
+
+def _spot_paths(contents: Contents, display: Display, height: float) -> str:
+    """Hot spots, drawn over the regions and switched on by a button."""
+    if contents.hotspots is None or not len(contents.hotspots):
+        return ""
+    shapes = np.asarray(contents.hotspots.geometry, dtype=object)[:MOST_SPOTS]
+    step = display.grid.dx * display.grid.n_cols / display.shape[1]
+    simple = shapely.simplify(shapes, 0.5 * step, preserve_topology=False)
+    drawn = "".join(_path(shape, display, height) for shape in simple)
+    return f'<path id="spots" class="off" aria-hidden="true" d="{drawn}"/>'
+
+
+def _spots_button(contents: Contents) -> str:
+    if contents.hotspots is None or not len(contents.hotspots):
+        return ""
+    return (
+        '<button type="button" id="spots-button" class="also" aria-pressed="false">'
+        f"Hot spots ({len(contents.hotspots)})</button>"
+    )
+
+
+def _path(shape: Any, display: Display, height: float) -> str:
     left, bottom, right, top = display.grid.bounds
     scale_by = np.array([WIDTH / (right - left), -height / (top - bottom)])
-    origin = np.array([left, top])
-    paths = []
-    for at, shape in enumerate(outlines(contents)):
-        drawn = _path(shape, origin, scale_by)
-        if drawn:
-            paths.append(f'<path data-r="{at}" d="{drawn}"/>')
-    return f'<g id="shapes" aria-hidden="true">{"".join(paths)}</g>'
-
-
-def _path(shape: Any, origin: NDArray[np.float64], scale_by: NDArray[np.float64]) -> str:
     parts = shapely.get_parts(shape)
     rings = shapely.get_rings(parts[shapely.get_type_id(parts) == 3])
     pieces = []
     for ring in rings:
-        points = np.round((shapely.get_coordinates(ring)[:-1] - origin) * scale_by, 1)
-        pieces.append("M" + "L".join(f"{x:g} {y:g}" for x, y in points) + "Z")
+        points = (shapely.get_coordinates(ring)[:-1] - np.array([left, top])) * scale_by
+        pieces.append("M" + "L".join(f"{x:g} {y:g}" for x, y in np.round(points, 1)) + "Z")
     return "".join(pieces)

@@ -58,11 +58,12 @@ def headings(names: Sequence[tuple[str, bool]], *, sortable: bool = False) -> st
 
 def rows_of(rows: Iterable[Sequence[Cell]], *, named: int = 0) -> str:
     """Rows of a table body; the cell at ``named`` is the row's head."""
-    lines = []
-    for row in rows:
-        cells = "".join(cell.render(head=at == named) for at, cell in enumerate(row))
-        lines.append(f"<tr>{cells}</tr>")
-    return "\n".join(lines)
+    return "\n".join(f"<tr>{cells_of(row, named=named)}</tr>" for row in rows)
+
+
+def cells_of(row: Sequence[Cell], *, named: int = 0) -> str:
+    """The cells of one row; the one at ``named`` is the row's head."""
+    return "".join(cell.render(head=at == named) for at, cell in enumerate(row))
 
 
 def table(
@@ -99,7 +100,7 @@ def bullets(items: Iterable[str]) -> str:
 
 def share_words(part: float, whole: float) -> str:
     """A share in a sentence."""
-    return percent(part, whole).replace("< ", "less than ")
+    return percent(part, whole).replace("<\u00a0", "less than ")
 
 
 def percent(part: float, whole: float) -> str:
@@ -108,7 +109,8 @@ def percent(part: float, whole: float) -> str:
         return "0 %"
     share = 100.0 * part / whole
     if share == 0:
-        return "0 %"
+        return "0\u00a0%"
     if 0 < share < 0.1:
-        return "< 0.1 %"
-    return f"{share:.1f} %" if share < 10 or 90 < share < 100 else f"{share:.0f} %"
+        return "<\u00a00.1\u00a0%"
+    words = f"{share:.1f}" if share < 10 or 90 < share < 100 else f"{share:.0f}"
+    return f"{words}\u00a0%"

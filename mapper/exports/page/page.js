@@ -58,8 +58,11 @@
     const line = document.createElement("div"), row = rows.get(r);
     line.append(element("b", data.regions[r]));
     if (row) {
+      const at = Array.from(row.cells).findIndex((cell) => cell.tagName === "TH");
       const read = (n) => row.cells[n].firstChild.textContent;
-      line.append(": drawdown " + read(3) + " t CO₂ per year, " + read(2) + " t per km² and year, rank " + read(0));
+      line.append(": drawdown " + read(at + 2) + " t CO₂ per year, " + read(at + 1) + " t per km² and year, rank " + read(0));
+      if (at > 1) line.append(" (90 % of draws: " + read(1) + ")");
+      if (data.ties[r]) line.append("; cannot be told apart from " + data.ties[r]);
     }
     return line;
   }
@@ -209,6 +212,12 @@
       document.getElementById("legend-" + one.dataset.layer).hidden = !on;
     });
   }));
+
+  const spots = find("#spots-button");
+  if (spots) spots.addEventListener("click", () => {
+    const on = find("#spots").classList.toggle("off");
+    spots.setAttribute("aria-pressed", String(!on));
+  });
 
   // the table ---------------------------------------------------------------------------------
   rows.forEach((row, r) => {

@@ -8,7 +8,7 @@ from typing import Any
 
 from mapper.exports.contents import OTHER_ROWS, Contents
 from mapper.exports.page.answer import interval
-from mapper.exports.page.markup import Cell, figure_cell, headings, rows_of
+from mapper.exports.page.markup import Cell, cells_of, figure_cell, headings, rows_of
 from mapper.exports.words import escape, isolate, number, shorten
 
 MOST_ROWS = 2000
@@ -28,13 +28,13 @@ def ranking(contents: Contents) -> str:
     rows = [
         _row(place, name, contents, tops, span) for place, name in enumerate(order[:MOST_ROWS], 1)
     ]
+    named = 2 if span else 1
     numbered = {name: at for at, name in enumerate(regions.names)}
     body = "\n".join(
-        f'<tr data-r="{numbered[name]}">{"".join(c.render(head=n == 1) for n, c in enumerate(row))}'
-        "</tr>"
+        f'<tr data-r="{numbered[name]}">{cells_of(row, named=named)}</tr>'
         for name, row in zip(order, rows, strict=False)
     )
-    foot = rows_of([_foot(name, table[name], span) for name in OTHER_ROWS], named=1)
+    foot = rows_of([_foot(name, table[name], span) for name in OTHER_ROWS], named=named)
     left_out = (
         f'<p class="note">The first {MOST_ROWS} of {len(order)} regions; all are in '
         "<code>tables/regions.csv</code>.</p>"
@@ -43,11 +43,33 @@ def ranking(contents: Contents) -> str:
     )
     return (
         '<div class="rank"><h3 id="rank-title">Regions</h3>'
-        '<p class="note">A heading sorts; a region’s name finds it on the map.</p>'
+        f'<p class="note">{_note(span)}</p>'
         '<div class="scroll tall" tabindex="0" role="region" aria-labelledby="rank-title">'
         f'<table id="regions" class="bars">{headings(_heads(span), sortable=True)}'
         f"<tbody>{body}</tbody><tfoot>{foot}</tfoot></table></div>{left_out}</div>"
     )
+
+
+def _note(span: tuple[str, str] | None) -> str:
+    text = "A heading sorts; a region’s name finds it on the map."
+    if span:
+        text += (
+            " The rank interval holds the places that a region took in 90\u00a0% of the "
+            "draws: regions whose intervals overlap may change places by noise alone."
+        )
+    return text
+
+
+def ties(contents: Contents) -> list[str]:
+    """The regions that each cannot be told apart from, in the order of the shapes."""
+    regions, given = contents.plan.regions, contents.tables.get("ranking")
+    if regions is None or given is None or "tied_with" not in given.columns:
+        return []
+    return [_tie(given.by_region.get(name, {}).get("tied_with")) for name in regions.names]
+
+
+def _tie(value: object) -> str:
+    return shorten(value, 160) if isinstance(value, str) else ""
 
 
 def _heads(span: tuple[str, str] | None) -> list[tuple[str, bool]]:
@@ -56,7 +78,7 @@ def _heads(span: tuple[str, str] | None) -> list[tuple[str, bool]]:
     heads = [("Rank", True), ("Region", False), (f"Drawdown {unit}", True)]
     heads += [(f"Drawdown {yearly}", True), (f"Consumption {yearly}", True)]
     heads += [("Area <small>km²</small>", True)]
-    return [*heads, ("Rank, 90 %", True)] if span else heads
+    return [heads[0], ("Rank, 90\u00a0%", True), *heads[1:]] if span else heads
 
 
 def _order(contents: Contents) -> list[str]:
@@ -103,12 +125,13 @@ def _row(
     if span:
         given = contents.tables["ranking"].by_region.get(name, {})
         low, high = (float(given.get(key, math.nan)) for key in span)
-        cells.append(Cell(f"{low:.0f}–{high:.0f}" if high == high else "–", low, numeric=True))  # noqa: PLR0124
+        words = f"{low:.0f}" if low == high else f"{low:.0f}–{high:.0f}"
+        cells.insert(1, Cell(words if math.isfinite(high) else "–", low, numeric=True))
     return cells
 
 
 def _value(row: Mapping[str, Any], key: str, top: float) -> Cell:
-    span = interval(dict(row), key)
+    span = interval(dict(row), key, link="–")
     html = number(row[key]) + (f"<small>{span}</small>" if span else "")
     return Cell(html, row[key], numeric=True, share=row[key] / top if top > 0 else None)
 
@@ -118,4 +141,4 @@ def _foot(name: str, row: Mapping[str, Any], span: tuple[str, str] | None) -> li
     cells = [Cell(""), Cell(escape(words))]
     cells += [_value(row, key, 0.0) for key in (RATE, TOTAL, SHORT)]
     cells += [figure_cell(row["valid_area_km2"])]
-    return [*cells, Cell("")] if span else cells
+    return [Cell(""), *cells] if span else cells

@@ -1,4 +1,4 @@
-"""The sections below the map: where the total comes from, how sure, what was left out."""
+"""The sections below the map: where the total comes from, and what was left out."""
 
 from __future__ import annotations
 
@@ -7,8 +7,8 @@ from collections.abc import Mapping
 from typing import Any
 
 from mapper.engine import FLAG_MEANING, Flag
-from mapper.exports.colours import ROCK_COLOUR, flag_key, hex_at, scale
-from mapper.exports.contents import OTHER_ROWS, Contents, Table
+from mapper.exports.colours import ROCK_COLOUR, flag_key
+from mapper.exports.contents import OTHER_ROWS, Contents
 from mapper.exports.page.markup import (
     Cell,
     figure_cell,
@@ -120,50 +120,9 @@ def _matrix(contents: Contents, rows: list[Row], whole: list[Row]) -> str:
 def _tinted(value: float, most: float) -> Cell:
     if not math.isfinite(value) or value <= 0:
         return Cell('<span class="none">·</span>', numeric=True)
-    share = math.sqrt(value / most)
-    colour = hex_at(scale("drawdown"), 0.9 * share)
-    ink = "#fff" if share > 0.62 else "inherit"
-    html = f'<b style="background:{colour};color:{ink}">{number(value, 3)}</b>'
+    strength = 6.0 + 46.0 * math.sqrt(value / most)  # percent; dark text stays readable on all
+    html = f'<b style="--tint:{strength:.0f}%">{number(value, 3)}</b>'
     return Cell(html, value, numeric=True)
-
-
-def doubt_section(contents: Contents) -> str:
-    """What drives the uncertainty, where the run measured it."""
-    given = contents.tables.get("sensitivity")
-    title = "What drives the uncertainty"
-    if given is None:
-        text = (
-            "This job made no draws, so nothing can be said about what drives the uncertainty. "
-            "To ask for it, add <code>[uncertainty]</code> with <code>draws = 1000</code> to the "
-            "job and run it again."
-        )
-        return section("doubt", title, paragraph(text, "quiet"))
-    return section("doubt", title, *_sensitivity(given))
-
-
-def _sensitivity(given: Table) -> list[str]:
-    numeric = [name for name in given.columns if not isinstance(_first(given, name), str)]
-    key = next((name for name in numeric if "share" in name or "variance" in name), "")
-    key = key or (numeric[0] if numeric else "")
-    rows = [row for row in given.records() if row.get("region", "all") == "all"]
-    rows.sort(key=lambda row: -abs(row[key]) if key and math.isfinite(row[key]) else 0.0)
-    most = max((abs(row[key]) for row in rows if key and math.isfinite(row[key])), default=0.0)
-    shown = [name for name in given.columns if name != "region"]
-    heads = [(escape(name.replace("_", " ")), name in numeric) for name in shown]
-    lines = [
-        [
-            figure_cell(row[name], 3, share=abs(row[name]) / most if name == key and most else None)
-            if name in numeric
-            else text_cell(escape(shorten(row[name], 200)))
-            for name in shown
-        ]
-        for row in rows[:40]
-    ]
-    return [table("What the spread of the whole total comes from", heads, lines, kind="bars")]
-
-
-def _first(given: Table, name: str) -> Any:
-    return next(iter(given.column(name)), "")
 
 
 def limits_section(contents: Contents) -> str:

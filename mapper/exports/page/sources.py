@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from typing import Any
 
-from mapper.exports.contents import SET_BY_JOB, Contents, parameter_rows
-from mapper.exports.page.answer import interval
+from mapper.exports.contents import GRADE_WORDS, Contents, parameter_rows
+from mapper.exports.page.answer import WIDTH, interval
 from mapper.exports.page.markup import (
     Cell,
     bullets,
@@ -23,14 +23,6 @@ _HOW = {
     "mean": "mean weighted by area",
     "points": "from another CRS, sampled at points of each cell",
     "polygons": "polygons, exact share of each cell",
-}
-_GRADE = {
-    "read": "read in the source",
-    "quoted": "quoted from the source elsewhere",
-    "memory": "from memory, not seen",
-    "computed": "computed from the formula",
-    "project": "this project’s own choice",
-    SET_BY_JOB: "set by the job",
 }
 
 
@@ -117,7 +109,7 @@ def _parameters(contents: Contents) -> str:
                 f"<small>{escape(law)}</small>"
             ),
             text_cell(_values(values)),
-            text_cell(escape(_GRADE.get(grade, grade))),
+            text_cell(escape(GRADE_WORDS.get(grade, grade))),
             text_cell(escape(source)),
         ]
         for (law, name, unit, grade, source), values in sorted(groups.items())
@@ -160,8 +152,8 @@ def cautions_section(contents: Contents) -> str:
 
 def _citation(contents: Contents) -> str:
     row = contents.regions.by_region["all"]
-    span = interval(row, "drawdown_t_per_yr", 4)
-    sure = f"90 % interval {span}" if span else "no interval computed"
+    span = interval(row, "drawdown_t_per_yr")
+    sure = f"{WIDTH} {span}" if span else "no interval computed"
     laws = ", ".join(sorted({law["law"] for law in contents.record["laws"].values()}))
     version = contents.record["versions"]["saprolite"]
     return (

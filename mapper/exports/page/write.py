@@ -8,9 +8,10 @@ from mapper.exports.contents import Contents
 from mapper.exports.display import DISPLAY_CELLS, Display, read_display
 from mapper.exports.files import whole_file
 from mapper.exports.page.answer import head
+from mapper.exports.page.doubt import doubt_section
 from mapper.exports.page.mapview import map_data, map_figure
 from mapper.exports.page.ranking import ranking
-from mapper.exports.page.sections import doubt_section, limits_section, origin_section
+from mapper.exports.page.sections import limits_section, origin_section
 from mapper.exports.page.sources import cautions_section, sources_section
 from mapper.exports.words import escape, script_json, shorten
 
