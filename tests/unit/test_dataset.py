@@ -69,6 +69,6 @@ def test_a_law_that_does_not_fit_is_refused(tmp_path, law, message):
         mapper.drawdown(dataset, law)
 
 
-def test_a_dataset_of_ones_own_needs_a_law(tmp_path):
+def test_a_dataset_of_ones_own_needs_a_law():
     with pytest.raises(LawError, match="does not carry a job's laws"):
         mapper.drawdown(xr.Dataset())
