@@ -180,13 +180,14 @@ def one_turn(axis: Axis, registration: str | None, *, where: str) -> Axis:
         return axis
     if abs(over - axis.step) > 0.01 * axis.step:
         raise GridError(
-            f"longitudes span {360.0 + over:g} degrees, more than a turn",
+            f"the file spans {360.0 + over:g} degrees of longitude, more than a turn",
             where=where,
             fix="a file of at most 360 degrees of longitude",
         )
     if registration != "node":
         raise GridError(
-            f"longitudes span {360.0 + over:g} degrees: the last column seems to repeat the first",
+            f"the file spans {360.0 + over:g} degrees of longitude: the last column seems to "
+            "repeat the first",
             where=where,
             fix='registration = "node" if values stand at the nodes of the grid',
         )

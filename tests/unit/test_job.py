@@ -72,7 +72,7 @@ def test_a_variable_that_is_not_set_is_a_problem(tmp_path, monkeypatch):
         ),
         (
             {"layers": {**LAYERS, "vegetation": {"path": "v.tif", "kind": "nvdi"}}},
-            "kind = 'nvdi', and one of cover, ndvi, ndvi-squared is needed",
+            "kind = 'nvdi', and one of cover, ndvi, ndvi-squared, class is needed",
             'kind = "ndvi"',
         ),
         ({"layers": {}}, "the job has no lithology layer", "[layers.lithology]"),
