@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
+from mapper.coverage import MIXED
 from mapper.evaluation import (
     COUNTED_FLAGS,
     OUTSIDE_RANGE,
@@ -29,7 +30,7 @@ from mapper.rocks import ROCK_NAMES, ROCKS
 from mapper.scheme import Alternative, Scheme
 from mapper.states import AXES as STATE_AXES
 from mapper.states import StateCounts, StateLayout, count_states, merge_states
-from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
+from mapper.sums import LIMBS, Counts, Runs, add_repeated, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
 
@@ -138,9 +139,9 @@ def evaluate_block_states(
     result, *others = _evaluate_window(plan, rocks, parts)
     maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
-    areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
-    ground = _split_ground(rocks, regions, areas)
-    sums = _sum_block(plan, result, ground, (regions, areas, maps))
+    row_areas = cell_areas(plan.grid, window)
+    ground = _split_ground(rocks, regions, np.broadcast_to(row_areas, window.shape).ravel())
+    sums = _sum_block(plan, result, ground, (regions, row_areas, maps))
     if others:
         laws = [_sum_alternative(plan, one, ground) for one in others]
         sums = sums._replace(laws=np.stack(laws))
@@ -211,6 +212,9 @@ def _evaluate_window(
     ----------
     parts : each part's share of the year and its layers.
     """
+    if not plan.month_shares and not plan.scheme.alternatives:
+        ((_, inputs),) = parts
+        return [RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))]
     n = rocks.cell.size
     every = (None, *plan.scheme.alternatives)
     rates = [np.zeros(n) for _ in every]
@@ -261,14 +265,13 @@ def _evaluate_entries(
     rate = np.empty(rocks.cell.size)
     flags = np.zeros(rocks.cell.size, dtype=np.uint8)
     for rock, part in rock_parts(rocks):
-        cells = rocks.cell[part]
         law = scheme.by_rock.get(rock)
-        names = law.law.input_names if law else ()
-        taken = {name: inputs[name][cells] for name in names}
         if law is None:
             rate[part] = 0.0
-        else:
-            rate[part], flags[part] = evaluate_rock(law, taken)
+            continue
+        cells = rocks.cell.take(part)
+        taken = {name: inputs[name].take(cells) for name in law.law.input_names}
+        rate[part], flags[part] = evaluate_rock(law, taken)
     return rate, flags
 
 
@@ -284,6 +287,9 @@ def rock_parts(rocks: RockCells) -> list[tuple[str, Ints]]:
     ]
 
 
+WHOLE = 1.0 - 1e-6
+"""Shares from here on count as the whole cell."""
+
 KEPT = np.array([drawdown_share(ROCKS[name]) for name in ROCK_NAMES])
 """Share of the short-term uptake that lasts, by rock [1]."""
 
@@ -291,26 +297,28 @@ KEPT = np.array([drawdown_share(ROCKS[name]) for name in ROCK_NAMES])
 def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> BlockMaps:
     """Weigh each cell's rocks by their shares; what has no result counts as no data."""
     n, cell = window.n_cells, rocks.cell
-    good = ~np.isnan(rate)
-    share = np.where(good, rocks.share, 0.0)
-    taken = np.where(good, rate, 0.0) * share
     cell_flags = np.zeros(n, dtype=np.uint8)
-    consumption: Floats = np.zeros(n)
-    drawdown: Floats = np.zeros(n)
-    valid: Floats = np.zeros(n)
+    consumption: Floats = np.full(n, np.nan)
+    drawdown: Floats = np.full(n, np.nan)
     if (cell[1:] > cell[:-1]).all():  # one rock a cell: nothing to add
-        consumption[cell], drawdown[cell], valid[cell] = taken, taken * KEPT[rocks.rock], share
+        taken = rate * rocks.share
+        consumption[cell], drawdown[cell] = taken, taken * KEPT.take(rocks.rock)
         cell_flags[cell] = flags
+        partly = cell[rocks.share < WHOLE] if rocks.share.size else cell
+        cell_flags[partly] |= bit(Flag.PARTLY_NO_DATA)
     else:
-        consumption += np.bincount(cell, weights=taken, minlength=n)
-        drawdown += np.bincount(cell, weights=taken * KEPT[rocks.rock], minlength=n)
-        valid += np.bincount(cell, weights=share, minlength=n)
+        good = ~np.isnan(rate)
+        share = np.where(good, rocks.share, 0.0)
+        taken = np.where(good, rate, 0.0) * share
+        valid = np.bincount(cell, weights=share, minlength=n)
+        held = valid > 0.0
+        consumption[held] = np.bincount(cell, weights=taken, minlength=n)[held]
+        drawdown[held] = np.bincount(cell, weights=taken * KEPT[rocks.rock], minlength=n)[held]
         np.bitwise_or.at(cell_flags, cell, flags)
-    empty = valid <= 0.0
-    consumption[empty] = np.nan
-    drawdown[empty] = np.nan
+        cell_flags[valid < WHOLE] |= bit(Flag.PARTLY_NO_DATA)
+    empty = np.isnan(consumption)
+    cell_flags[empty] &= ~bit(Flag.PARTLY_NO_DATA)
     cell_flags[empty] |= bit(Flag.NO_DATA)
-    cell_flags[~empty & (valid < 1.0 - 1e-6)] |= bit(Flag.PARTLY_NO_DATA)
     shape = window.shape
     return BlockMaps(consumption.reshape(shape), drawdown.reshape(shape), cell_flags.reshape(shape))
 
@@ -321,11 +329,12 @@ def _sum_block(
     ground: _Ground,
     cells: tuple[RegionCells, Floats, BlockMaps],
 ) -> BlockSums:
-    regions, areas, maps = cells
+    regions, row_areas, maps = cells
+    window = Window(0, 0, *maps.flags.shape)
+    areas = np.broadcast_to(row_areas, window.shape).ravel()
     exponent = unit_exponent(plan.grid)
     n_regions = plan.n_regions
-    every = regions.split(np.arange(areas.size))
-    area = add_up(every.region, areas[every.entry] * every.part, n_regions, exponent)
+    area = _sum_regions(plan, regions, row_areas, window)
     key, held = ground.key, ground.area
     rate = result.rate[ground.entry]
     good = ~np.isnan(rate)
@@ -347,6 +356,30 @@ def _sum_block(
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
         laws=np.zeros((0, 3, *shape), dtype=np.int64),
     )
+
+
+def _sum_regions(plan: Plan, regions: RegionCells, areas: Floats, window: Window) -> Counts:
+    """Area of each region and of 'outside'.
+
+    Divided cells piece by piece, whole ones by counting where the cells of a row are alike.
+
+    Parameters
+    ----------
+    areas : from `cell_areas`.
+    """
+    exponent, n_regions = unit_exponent(plan.grid), plan.n_regions
+    flat = np.broadcast_to(areas, window.shape)
+    divided = regions.split(regions.cell)
+    at = np.unravel_index(regions.cell[divided.entry], window.shape)
+    counts = add_up(divided.region, flat[at] * divided.part, n_regions, exponent)
+    whole = regions.single != MIXED
+    if areas.shape[1] != 1:
+        return counts + add_up(regions.single[whole], flat.ravel()[whole], n_regions, exponent)
+    held = np.where(whole, regions.single, n_regions).reshape(window.shape)
+    keys = held + np.arange(window.n_rows, dtype=np.int32)[:, None] * np.int32(n_regions + 1)
+    times = np.bincount(keys.ravel(), minlength=window.n_rows * (n_regions + 1))
+    times = times.reshape(window.n_rows, n_regions + 1)[:, :-1]
+    return counts + add_repeated(areas[:, 0], times, exponent)
 
 
 def _flagged(
