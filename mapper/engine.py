@@ -168,10 +168,23 @@ class _Ground(NamedTuple):
 
 
 def _split_ground(rocks: RockCells, regions: RegionCells, areas: Floats) -> _Ground:
-    pieces = regions.split(rocks.cell)
-    cell = rocks.cell[pieces.entry]
-    key = pieces.region * N_ROCKS + rocks.rock[pieces.entry]
-    return _Ground(pieces.entry, cell, key, areas[cell] * rocks.share[pieces.entry] * pieces.part)
+    """Every entry as one piece, then the pieces of divided cells, whose entries hold no area."""
+    n = rocks.cell.size
+    held = regions.single.take(rocks.cell)
+    mixed = np.flatnonzero(held == MIXED)
+    held[mixed] = 0
+    divided = regions.split(rocks.cell[mixed])
+    entry = np.concatenate([np.arange(n), mixed[divided.entry]])
+    cell = rocks.cell if not mixed.size else rocks.cell.take(entry)
+    key = np.empty(entry.size, dtype=np.int64)
+    np.multiply(held, N_ROCKS, out=key[:n])
+    key[n:] = divided.region * N_ROCKS
+    key += rocks.rock if not mixed.size else rocks.rock.take(entry)
+    area = areas.take(cell)
+    area *= rocks.share if not mixed.size else rocks.share.take(entry)
+    area[n:] *= divided.part
+    area[mixed] = 0.0
+    return _Ground(entry, cell, key, area)
 
 
 def _count_block(
