@@ -153,6 +153,8 @@ def summary_lines(title: str, result: RunResult) -> list[str]:
         lines.extend(_ranked_regions(result.ranking))
     if result.spread is not None:
         lines.extend(_driving_quantities(result.spread))
+    if result.resumed_blocks:
+        lines.append(f"  went on from {result.resumed_blocks} finished blocks of the run before")
     lines.append(f"  {result.folder} ({result.seconds:.1f} s)")
     lines.append("  A screening estimate, not verified removal.")
     return lines
