@@ -18,6 +18,7 @@ from rio_cogeo.cogeo import cog_validate
 import mapper
 import mapper.errors
 from mapper.cli import main
+from mapper.pipeline import Engine
 from tests.making import (
     ROOT,
     command,
@@ -159,7 +160,7 @@ def test_the_same_job_twice_and_on_one_or_two_threads_gives_the_same_bytes(ran, 
     first = contents(out)
     job = mapper.load_job(out.parent / "job.toml")
     for threads in (1, 2):
-        mapper.run(job, out=tmp_path / str(threads), threads=threads)
+        mapper.run(job, out=tmp_path / str(threads), engine=Engine(threads=threads))
         assert contents(tmp_path / str(threads)) == first
 
 
@@ -271,13 +272,13 @@ def test_a_job_without_regions_is_one_outside(tmp_path):
 
 SLOW = """
 import sys, time
-from mapper import cli, pipeline, planning
-planning.block_shape = pipeline.block_shape = lambda plan: (1, 1)
-whole = pipeline.evaluate_block
-def slowly(plan, window):
+from mapper import cli, pipeline
+pipeline.block_shape = lambda *_: (1, 1)
+whole = pipeline.evaluate_block_states
+def slowly(*what):
     time.sleep(PAUSE)
-    return whole(plan, window)
-pipeline.evaluate_block = slowly
+    return whole(*what)
+pipeline.evaluate_block_states = slowly
 sys.exit(cli.main(sys.argv[1:]))
 """
 
