@@ -8,6 +8,7 @@ import re
 import sys
 import time
 from collections.abc import Sequence
+from pathlib import Path
 from typing import TYPE_CHECKING, TextIO
 
 if TYPE_CHECKING:
@@ -58,8 +59,17 @@ def _parser() -> argparse.ArgumentParser:
     )
     commands = parser.add_subparsers(dest="command", metavar="COMMAND")
     run = commands.add_parser("run", help="run a job and write its folder of maps and tables")
-    run.add_argument("job", metavar="JOB", help="the job file (TOML)")
-    run.add_argument("--out", metavar="DIR", help="folder to write; default: the job's own")
+    run.add_argument("jobs", metavar="JOB", nargs="+", help="job files (TOML), run in turn")
+    run.add_argument(
+        "--out",
+        metavar="DIR",
+        help="folder to write; default: the job's own; of several jobs each gets one within it",
+    )
+    run.add_argument(
+        "--table",
+        metavar="FILE",
+        help="the regions of all jobs as one CSV; default: combined.csv in DIR",
+    )
     run.add_argument("--fresh", action="store_true", help="start over where a run was cut short")
     run.add_argument("--threads", type=_positive, metavar="N", help="default: all processors")
     run.add_argument(
@@ -111,22 +121,36 @@ def _size(text: str) -> float:
 
 
 def _run(chosen: argparse.Namespace) -> int:
+    from mapper.batch import COMBINED, Task, open_batch, run_batch  # noqa: PLC0415
     from mapper.pipeline import Engine, run  # noqa: PLC0415
     from mapper.planning import open_job  # noqa: PLC0415
 
     asked = {name: getattr(chosen, name) for name in ("threads", "scheduler", "memory")}
     given = {name: value for name, value in asked.items() if value is not None}
-    bar = ProgressBar(sys.stderr)
-    job = open_job(chosen.job)
-    result = run(
-        job,
-        out=chosen.out,
-        fresh=chosen.fresh,
-        engine=Engine(**given),
-        progress=bar.update,
-    )
-    bar.close()
-    print("\n".join(summary_lines(job.title, result)))  # noqa: T201
+
+    def run_one(task: Task) -> RunResult:
+        bar = ProgressBar(sys.stderr)
+        result = run(
+            task.job,
+            out=task.folder,
+            fresh=chosen.fresh,
+            engine=Engine(**given),
+            progress=bar.update,
+        )
+        bar.close()
+        print("\n".join(summary_lines(task.job.title, result)))  # noqa: T201
+        return result
+
+    table = Path(chosen.table) if chosen.table else None
+    if len(chosen.jobs) > 1:
+        tasks = open_batch(chosen.jobs, chosen.out)
+        table = table or (Path(chosen.out) / COMBINED if chosen.out else None)
+    else:
+        job = open_job(chosen.jobs[0])
+        tasks = [Task(Path(job.path).stem, job, Path(chosen.out or job.folder))]
+    run_batch(tasks, run_one, table)
+    if table is not None:
+        print(f"{table}: the regions of {len(tasks)} jobs")  # noqa: T201
     return DONE
 
 
@@ -153,6 +177,8 @@ def summary_lines(title: str, result: RunResult) -> list[str]:
         lines.extend(_ranked_regions(result.ranking))
     if result.spread is not None:
         lines.extend(_driving_quantities(result.spread))
+    if result.resumed_blocks:
+        lines.append(f"  went on from {result.resumed_blocks} finished blocks of the run before")
     lines.append(f"  {result.folder} ({result.seconds:.1f} s)")
     lines.append("  A screening estimate, not verified removal.")
     return lines

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import logging
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from typing import Any
@@ -9,7 +10,7 @@ from typing import Any
 from mapper.errors import JobError
 
 LOCAL = "local"
-CONNECT_SECONDS = "15s"
+CONNECT_SECONDS = 15.0
 
 
 @contextmanager
@@ -23,14 +24,18 @@ def connected(address: str, processes: int) -> Iterator[Any]:
 
     Raises
     ------
-    JobError where no scheduler answers.
+    JobError where no scheduler answers, or it has no workers.
     """
     from distributed import Client, LocalCluster  # noqa: PLC0415 - only where it is asked for
 
+    logging.getLogger("distributed").setLevel(logging.CRITICAL)  # what matters is raised
     if address == LOCAL:
         with (
             LocalCluster(
-                n_workers=processes, threads_per_worker=1, dashboard_address=None
+                n_workers=processes,
+                threads_per_worker=1,
+                dashboard_address=None,
+                silence_logs=logging.CRITICAL,
             ) as cluster,
             Client(cluster) as client,
         ):
@@ -45,12 +50,36 @@ def connected(address: str, processes: int) -> Iterator[Any]:
             fix="the address that dask scheduler prints, or --scheduler local",
         ) from cause
     with client:
+        _wait_for_workers(client, address)
         yield client
 
 
+def _wait_for_workers(client: Any, address: str) -> None:
+    try:
+        client.wait_for_workers(1, timeout=CONNECT_SECONDS)
+    except TimeoutError as cause:
+        raise JobError(
+            f"the scheduler at {address!r} has no workers",
+            where="--scheduler",
+            fix=f"start some with: dask worker {address}",
+        ) from cause
+
+
 def finished(futures: Sequence[Any]) -> Iterator[Any]:
-    """Give results as they come in; the first error is raised and the rest are let go."""
-    from distributed import as_completed  # noqa: PLC0415
+    """Give results as they come in; the first error is raised and the rest are let go.
+
+    Raises
+    ------
+    JobError where one task has ended several workers; whatever else a task raised.
+    """
+    from distributed import KilledWorker, as_completed  # noqa: PLC0415
 
     for future in as_completed(futures):
-        yield future.result()
+        try:
+            yield future.result()
+        except KilledWorker as cause:
+            raise JobError(
+                "several workers ended while they computed the same block",
+                where="--scheduler",
+                fix="a smaller --memory and the same command again, or workers with more memory",
+            ) from cause

@@ -63,8 +63,14 @@ class Journal:
         with np.load(self.block(index), allow_pickle=False) as arrays:
             return np.asarray(arrays[name])
 
+    @property
+    def note(self) -> Path:
+        """What the blocks were computed from; blocks without it belong to nothing."""
+        return self.folder / "fingerprint.json"
+
     def clear(self) -> None:
-        """Remove the work folder."""
+        """Remove the work folder, its note first: a kill midway leaves blocks that do not count."""
+        self.note.unlink(missing_ok=True)
         shutil.rmtree(self.folder, ignore_errors=True)
 
 
@@ -76,11 +82,11 @@ def open_journal(folder: Path, fingerprint: Mapping[str, Any], *, fresh: bool) -
     RunFolderError where the folder holds blocks of another job, or cannot be written.
     """
     journal = Journal(folder / WORK)
-    note = journal.folder / "fingerprint.json"
-    if fresh:
-        journal.clear()
+    note = journal.note
     try:
-        if note.exists():
+        if fresh or not note.exists():
+            journal.clear()
+        else:
             _refuse_changes(_read_note(note, folder), fingerprint, folder)
         journal.blocks.mkdir(parents=True, exist_ok=True)
         temporary = note.with_name(f".{note.name}")
