@@ -463,6 +463,7 @@ def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
             "drawdown_t_per_yr": float(found.drawdown.sum()),
             "valid_area_km2": float(found.valid_area.sum()),
             "area_under_flag_km2": found.flagged,
+            "water_balance": dict(found.water),
             "between_laws": describe_alternatives(result.laws),
         },
         "checks": dict(result.checks),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -10,6 +11,7 @@ from numpy.typing import NDArray
 
 from mapper.accounting import SQUARE_METRES_PER_KM2, to_rate, tonnes_per_mole
 from mapper.engine import COUNTED_FLAGS, FLAG_MEANING, KEPT, OUTSIDE_RANGE, BlockSums, Flag
+from mapper.layers.balance import describe_water
 from mapper.rocks import ROCK_NAMES
 from mapper.sums import Counts, totals
 from mapper.uncertainty.intervals import LEVEL_NAMES, LEVELS, Intervals
@@ -65,6 +67,8 @@ class Totals:
     capped: Floats
     flagged: dict[str, float]
     cells: Floats
+    water: Mapping[str, float]
+    """The water balance, where runoff is derived."""
 
 
 def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
@@ -89,6 +93,7 @@ def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
             for cause, counts in _by_cause(sums).items()
         },
         cells=cells * np.array([km2, tonnes, tonnes]),
+        water=describe_water(sums.water, exponent),
     )
 
 
