@@ -4,71 +4,41 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from enum import IntFlag
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
+from mapper.evaluation import (
+    COUNTED_FLAGS,
+    OUTSIDE_RANGE,
+    Bits,
+    Flag,
+    RockResult,
+    bit,
+    evaluate_rock,
+)
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import WaterSpec
-from mapper.laws import Capped
 from mapper.layers.balance import FALLEN, NO_BALANCE, water_sums
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
 from mapper.layers.water import derive_water
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
-from mapper.scheme import Alternative, RockLaw, Scheme
+from mapper.scheme import Alternative, Scheme
 from mapper.states import AXES as STATE_AXES
 from mapper.states import StateCounts, StateLayout, count_states, merge_states
 from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
+
+
 Ints = NDArray[np.int64]
-Bits = NDArray[np.uint8]
+
 
 N_ROCKS = len(ROCK_NAMES)
-
-
-class Flag(IntFlag):
-    """What a reader should know about a cell, as bits of ``maps/flags.tif``."""
-
-    NO_DATA = 1
-    PARTLY_NO_DATA = 2
-    RUNOFF_OUTSIDE = 4
-    TEMPERATURE_OUTSIDE = 8
-    OTHER_OUTSIDE = 16
-    CAPPED = 32
-    NEGATIVE_RUNOFF = 64
-    NOT_FINITE = 128
-
-
-FLAG_MEANING: Mapping[Flag, str] = {
-    Flag.NO_DATA: "no result: lithology or a layer that the law reads has no data",
-    Flag.PARTLY_NO_DATA: "a part of the cell has no result",
-    Flag.RUNOFF_OUTSIDE: "runoff outside the law's range",
-    Flag.TEMPERATURE_OUTSIDE: "temperature outside the law's range",
-    Flag.OTHER_OUTSIDE: "another layer outside the law's range",
-    Flag.CAPPED: "held at the supply limit",
-    Flag.NEGATIVE_RUNOFF: "runoff below zero, taken as zero",
-    Flag.NOT_FINITE: "the law gave no finite number",
-}
-
-OUTSIDE_RANGE = Flag.RUNOFF_OUTSIDE | Flag.TEMPERATURE_OUTSIDE | Flag.OTHER_OUTSIDE
-
-COUNTED_FLAGS: tuple[Flag, ...] = (
-    Flag.RUNOFF_OUTSIDE,
-    Flag.TEMPERATURE_OUTSIDE,
-    Flag.OTHER_OUTSIDE,
-    OUTSIDE_RANGE,
-    Flag.CAPPED,
-    Flag.NEGATIVE_RUNOFF,
-    Flag.NOT_FINITE,
-)
-"""Causes whose area is added up; ground under two causes of one entry counts once in that entry.
-The area without data is what is left of the rock's area."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -128,69 +98,6 @@ class BlockMaps(NamedTuple):
     consumption: Floats
     drawdown: Floats
     flags: Bits
-
-
-class RockResult(NamedTuple):
-    """The rate of one rock's entries [mol m-2 yr-1], NaN without a result, and their flags."""
-
-    rate: Floats
-    flags: Bits
-
-
-def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResult:
-    """Evaluate a law on one rock's entries.
-
-    Parameters
-    ----------
-    law : None for a class that does not weather, whose rate is zero.
-    inputs : layers in inner units, each of shape (n,).
-
-    Notes
-    -----
-    Runoff below zero is taken as zero. Entries outside the law's ranges are computed and flagged.
-    """
-    n = next(iter(inputs.values())).size if inputs else 0
-    flags = np.zeros(n, dtype=np.uint8)
-    if law is None:
-        return RockResult(np.zeros(n), flags)
-    read: list[Floats] = []
-    known = np.ones(n, dtype=np.bool_)
-    for one in law.law.inputs:
-        values = np.asarray(inputs[one.name], dtype=np.float64)
-        known &= ~np.isnan(values)
-        if one.name == "runoff" and (values < 0).any():
-            flags[values < 0] |= _bit(Flag.NEGATIVE_RUNOFF)
-            values = np.maximum(values, 0.0)
-        outside = (values < one.low) | (values > one.high)
-        flags[outside] |= _bit(_outside_flag(one.name))
-        read.append(values)
-    with np.errstate(all="ignore"):  # what is not finite is flagged below, cell by cell
-        rate, held = _rate(law, read)
-    rate = np.broadcast_to(rate, (n,))
-    if held is not None:
-        flags[held] |= _bit(Flag.CAPPED)
-    bad = known & ~np.isfinite(rate)
-    flags[bad] |= _bit(Flag.NOT_FINITE)
-    flags[~known] = 0
-    return RockResult(np.where(known & ~bad, rate, np.nan), flags)
-
-
-def _rate(law: RockLaw, layers: list[Floats]) -> tuple[Floats, NDArray[np.bool_] | None]:
-    """The law's rate, and where the supply limit held it, if the law has one."""
-    function = law.law.function
-    if isinstance(function, Capped):
-        return function.hold(*layers, **law.values)
-    return function(*layers, **law.values), None
-
-
-def _bit(flag: Flag) -> np.uint8:
-    return np.uint8(int(flag))
-
-
-def _outside_flag(name: str) -> Flag:
-    if name == "runoff":
-        return Flag.RUNOFF_OUTSIDE
-    return Flag.TEMPERATURE_OUTSIDE if name == "temperature" else Flag.OTHER_OUTSIDE
 
 
 def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[str, Floats]:
@@ -346,7 +253,7 @@ def _sum_alternative(plan: Plan, result: RockResult, ground: _Ground) -> Counts:
     rows = (
         np.where(good, rate, 0.0) * held,
         np.where(good, held, 0.0),
-        np.where((flags & _bit(OUTSIDE_RANGE)) != 0, held, 0.0),
+        np.where((flags & bit(OUTSIDE_RANGE)) != 0, held, 0.0),
     )
     runs = runs_of(ground.key)
     n_keys = plan.n_regions * N_ROCKS
@@ -408,8 +315,8 @@ def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> Bl
     empty = valid <= 0.0
     consumption[empty] = np.nan
     drawdown[empty] = np.nan
-    cell_flags[empty] |= _bit(Flag.NO_DATA)
-    cell_flags[~empty & (valid < 1.0 - 1e-6)] |= _bit(Flag.PARTLY_NO_DATA)
+    cell_flags[empty] |= bit(Flag.NO_DATA)
+    cell_flags[~empty & (valid < 1.0 - 1e-6)] |= bit(Flag.PARTLY_NO_DATA)
     shape = window.shape
     return BlockMaps(consumption.reshape(shape), drawdown.reshape(shape), cell_flags.reshape(shape))
 
@@ -452,7 +359,7 @@ def _sum_block(
 def _flagged(
     key: Ints, held: Floats, flags: Bits, flag: Flag, n_keys: int, exponent: int
 ) -> Counts:
-    here = (flags & _bit(flag)) != 0
+    here = (flags & bit(flag)) != 0
     if not here.any():
         return np.zeros((n_keys, LIMBS), dtype=np.int64)
     return add_up(key[here], held[here], n_keys, exponent)
