@@ -157,6 +157,7 @@ def _run(chosen: argparse.Namespace) -> int:
 def summary_lines(title: str, result: RunResult) -> list[str]:
     """What a run found, for the terminal."""
     from mapper.exports.alternatives import spread_lines  # noqa: PLC0415
+    from mapper.layers.balance import water_line  # noqa: PLC0415
 
     found = result.totals
     consumption, drawdown = found.consumption.sum(), found.drawdown.sum()
@@ -169,6 +170,8 @@ def summary_lines(title: str, result: RunResult) -> list[str]:
         f"  over {valid:,.0f} km2: {100 * valid / mapped if mapped else 0:.1f} % of the "
         f"{mapped:,.0f} km2 of mapped rock had data",
     ]
+    if found.water:
+        lines.append(water_line(found.water))
     lines.extend(_flag_lines(result))
     lines.extend(spread_lines(result.laws))
     if result.ranking is None:

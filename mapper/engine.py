@@ -22,6 +22,7 @@ from mapper.evaluation import (
 )
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import WaterSpec
+from mapper.layers.balance import FALLEN, NO_BALANCE, water_sums
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
 from mapper.layers.water import derive_water
@@ -75,7 +76,7 @@ class BlockSums(NamedTuple):
     drawdown [mol yr-1]. The others are by region and rock, shape (n_regions, n_rocks, LIMBS):
     rock area, area with a result, consumption, and the area under each of `COUNTED_FLAGS`.
     ``laws`` holds for each alternative law consumption, area with a result, and area outside its
-    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS).
+    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS). ``water`` is that of `water_sums`.
     """
 
     area: Counts
@@ -85,6 +86,7 @@ class BlockSums(NamedTuple):
     consumption: Counts
     flagged: Counts
     laws: Counts
+    water: Counts
 
     def plus(self, other: BlockSums) -> BlockSums:
         """Both sums together."""
@@ -114,7 +116,8 @@ def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[st
         if name in plan.layers
     }
     if "runoff" in needed and "runoff" not in plan.layers:
-        inputs["runoff"] = derive_water(plan.water, plan.layers, plan.grid, window).runoff
+        water = derive_water(plan.water, plan.layers, plan.grid, window)
+        inputs |= {"runoff": water.runoff, FALLEN: water.precipitation}
     return inputs
 
 
@@ -140,8 +143,12 @@ def evaluate_block_states(
     maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
     row_areas = cell_areas(plan.grid, window)
-    ground = _split_ground(rocks, regions, np.broadcast_to(row_areas, window.shape).ravel())
+    areas = np.broadcast_to(row_areas, window.shape).ravel()
+    ground = _split_ground(rocks, regions, areas)
     sums = _sum_block(plan, result, ground, (regions, row_areas, maps))
+    if "runoff" not in plan.layers:
+        of_year = read_inputs(plan, window) if whole is None else whole
+        sums = sums._replace(water=water_sums(of_year, rocks, areas, unit_exponent(plan.grid)))
     if others:
         laws = [_sum_alternative(plan, one, ground) for one in others]
         sums = sums._replace(laws=np.stack(laws))
@@ -368,6 +375,7 @@ def _sum_block(
         consumption=add_up(runs, rate * held, n_keys, exponent).reshape(shape),
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
         laws=np.zeros((0, 3, *shape), dtype=np.int64),
+        water=NO_BALANCE,
     )
 
 

@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from mapper.engine import Plan
+from mapper.gaps import Gaps, find_gaps
 from mapper.grid import blocks, parse_crs
 from mapper.job import Job
 from mapper.layers.layer import QUANTITY, Layer
@@ -30,6 +31,7 @@ class Inspection:
     job: Job
     plan: Plan
     samples: Mapping[str, Sample]
+    gaps: Gaps
 
     def lines(self) -> list[str]:
         """The inspection as text."""
@@ -46,6 +48,7 @@ class Inspection:
             _layer_line(layer, self.samples[name]) for name, layer in self.plan.layers.items()
         ]
         lines += [_water_line(self.plan)] if "runoff" not in self.plan.layers else []
+        lines += self.gaps.lines()
         lines += [_region_line(self.plan)]
         lines += [
             f"law         {rock}: {one.law.name}"
@@ -76,7 +79,7 @@ def inspect(job: Job) -> Inspection:
     plan = make_plan(job)
     make_draws(job, plan)  # refuses spreads that cannot be drawn
     samples = {name: sample_layer(layer) for name, layer in plan.layers.items()}
-    return Inspection(job, plan, samples)
+    return Inspection(job, plan, samples, find_gaps(plan))
 
 
 _HOW = {

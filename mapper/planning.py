@@ -17,7 +17,7 @@ from mapper.gridding import choose_grid
 from mapper.job import Job, LayerSpec, read_job
 from mapper.layers.lapse import with_lapse
 from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
-from mapper.layers.lithology import Lithology, unknown_codes
+from mapper.layers.lithology import Lithology, nothing_mapped, unknown_codes
 from mapper.layers.oddities import odd_values
 from mapper.layers.source import Source, file_kind
 from mapper.layers.vector import read_vector, reproject, valid_shapes
@@ -167,8 +167,10 @@ def _look(
             notes += [f"lithology: {note}" for note in lithology.source.notes]
     for layer in layers.values():
         with problems.gather():
-            sample_layer(layer)
+            sample = sample_layer(layer)
             found = (*layer.source.notes, *odd_values(layer))
+            if not sample.coverage:
+                found = ("no cell looked at has data; cells without data have no result", *found)
             notes += [f"{layer.name}: {note}" for note in found]
     return notes
 
@@ -328,11 +330,16 @@ def _check_codes(lithology: Lithology, problems: Problems) -> list[str]:
             whole = True
         if not whole:
             return []
+    seen_whole = lithology.grid.n_cells <= MOST_SAMPLED_CELLS
+    if not found:
+        if seen_whole:
+            problems.add(nothing_mapped(lithology.spec))
+        return ["lithology: no cell looked at is mapped"]
     known = lithology.legend.mixtures
     missing = {code: seen for code, seen in found.items() if normal_code(code) not in known}
     if missing and lithology.spec.unknown == "error":
         problems.add(unknown_codes(missing, lithology.spec, lithology.legend))
-    if lithology.grid.n_cells > MOST_SAMPLED_CELLS:
+    if not seen_whole:
         return []
     seen_codes = {normal_code(code) for code in found}
     absent = [code for code in known if code not in seen_codes]

@@ -219,6 +219,7 @@ def describe_run(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
             "drawdown_t_per_yr": float(found.drawdown.sum()),
             "valid_area_km2": float(found.valid_area.sum()),
             "area_under_flag_km2": found.flagged,
+            "water_balance": dict(found.water),
             "between_laws": describe_alternatives(result.laws),
         },
         "checks": dict(result.checks),

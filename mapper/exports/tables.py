@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -11,6 +12,7 @@ from numpy.typing import NDArray
 from mapper.accounting import SQUARE_METRES_PER_KM2, to_rate, tonnes_per_mole
 from mapper.engine import KEPT, BlockSums
 from mapper.evaluation import COUNTED_FLAGS, FLAG_MEANING, OUTSIDE_RANGE, Flag
+from mapper.layers.balance import describe_water
 from mapper.rocks import ROCK_NAMES
 from mapper.sums import Counts, totals
 from mapper.uncertainty.intervals import LEVEL_NAMES, LEVELS, Intervals
@@ -66,6 +68,8 @@ class Totals:
     capped: Floats
     flagged: dict[str, float]
     cells: Floats
+    water: Mapping[str, float]
+    """The water balance, where runoff is derived."""
 
 
 def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
@@ -90,6 +94,7 @@ def to_totals(sums: BlockSums, names: tuple[str, ...], exponent: int) -> Totals:
             for cause, counts in _by_cause(sums).items()
         },
         cells=cells * np.array([km2, tonnes, tonnes]),
+        water=describe_water(sums.water, exponent),
     )
 
 

@@ -213,6 +213,16 @@ def unknown_codes(
     )
 
 
+def nothing_mapped(spec: LayerSpec) -> ValuesError:
+    """The error for a geological map that maps no cell of the grid."""
+    return ValuesError(
+        "not a single cell of the grid holds a mapped rock",
+        where=spec.where,
+        fix="check nodata (a code that is a class must not be it), and that the file's CRS and "
+        "place, and [grid] bounds, are those of the ground that you mean",
+    )
+
+
 def _to_rocks(
     cells: Ints, codes: Ints, shares: Floats, mixtures: list[list[tuple[int, float]]]
 ) -> RockCells:

@@ -97,7 +97,7 @@ def open_netcdf(spec: LayerSpec) -> Source:
         crs=crs,
         x=x,
         y=y,
-        dtype=str(variable.dtype),
+        dtype=str(_true_dtype(variable)),
         nodata=(*tagged, *UNTAGGED_FILLS) if variable.dtype.kind == "f" else tagged,
         tagged_nodata=tagged,
         scale=float(attrs.get("scale_factor", 1.0)) if spec.scale is None else spec.scale,
@@ -294,7 +294,8 @@ def _nodata(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, ...]:
     values = list(spec.nodata)
     for key in ("_FillValue", "missing_value"):
         if key in variable.attrs:
-            values.extend(_number(one, key, spec) for one in np.atleast_1d(variable.attrs[key]))
+            stated = np.atleast_1d(variable.attrs[key])
+            values.extend(_as_read(_number(one, key, spec), variable) for one in stated)
     return tuple(dict.fromkeys(values))
 
 
@@ -310,17 +311,49 @@ def _number(value: Any, key: str, spec: LayerSpec) -> float:
 
 
 def _valid_range(variable: xr.DataArray, spec: LayerSpec) -> tuple[float, float]:
-    """The attributes valid_min, valid_max or valid_range, which CF states in packed values."""
+    """The attributes valid_min, valid_max or valid_range as limits of raw values.
+
+    CF states them in packed values. Fractional limits of packed whole numbers are limits of the
+    unpacked values, as the NetCDF users' guide has it.
+    """
     attrs = variable.attrs
     pair = np.atleast_1d(attrs.get("valid_range", ()))
     if pair.size == 2:
-        return _number(pair[0], "valid_range", spec), _number(pair[1], "valid_range", spec)
-    low, high = -np.inf, np.inf
-    if "valid_min" in attrs:
-        low = _number(np.atleast_1d(attrs["valid_min"])[0], "valid_min", spec)
-    if "valid_max" in attrs:
-        high = _number(np.atleast_1d(attrs["valid_max"])[0], "valid_max", spec)
-    return low, high
+        stated = {"low": ("valid_range", pair[0]), "high": ("valid_range", pair[1])}
+    else:
+        keys = {"low": "valid_min", "high": "valid_max"}
+        stated = {
+            end: (key, np.atleast_1d(attrs[key])[0]) for end, key in keys.items() if key in attrs
+        }
+    limits = {"low": -np.inf, "high": np.inf}
+    for end, (key, value) in stated.items():
+        limits[end] = _as_read(_number(value, key, spec), variable)
+    scale, offset = float(attrs.get("scale_factor", 1.0)), float(attrs.get("add_offset", 0.0))
+    fractional = any(np.asarray(value).dtype.kind == "f" for _, value in stated.values())
+    if not (fractional and variable.dtype.kind in "iu" and (scale, offset) != (1.0, 0.0)):
+        return limits["low"], limits["high"]
+    low, high = sorted((limits[end] - offset) / scale for end in limits)
+    return low - 1e-6, high + 1e-6  # of a step of packing: a limit itself is valid
+
+
+def _true_dtype(variable: xr.DataArray) -> np.dtype[Any]:
+    """The type that raw values have: NetCDF 3 knows no unsigned bytes and marks them so."""
+    mark = (_text(variable.attrs.get("_Unsigned")) or "").strip().lower()
+    kind = {("i", "true"): "u", ("u", "false"): "i"}.get((variable.dtype.kind, mark))
+    if kind is None:
+        return np.dtype(variable.dtype)
+    return np.dtype(f"{kind}{variable.dtype.itemsize}").newbyteorder(variable.dtype.byteorder)
+
+
+def _as_read(value: float, variable: xr.DataArray) -> float:
+    """A value that an attribute states in the stored type, as raw values have it."""
+    dtype = _true_dtype(variable)
+    if dtype.kind == variable.dtype.kind or not float(value).is_integer():
+        return value
+    turn = 2.0 ** (8 * dtype.itemsize)
+    if dtype.kind == "u":
+        return value + turn if value < 0 else value
+    return value - turn if value >= turn / 2 else value
 
 
 def _chunk(
@@ -356,7 +389,7 @@ def read_window(
             where=source.path,
             fix="the file is cut short or damaged: copy or fetch it again",
         ) from cause
-    return raw, np.ones(raw.shape, dtype=np.bool_)
+    return raw.view(_true_dtype(variable)), np.ones(raw.shape, dtype=np.bool_)
 
 
 def _dims(dataset: xr.Dataset, variable: xr.DataArray) -> tuple[str, str]:

@@ -236,9 +236,12 @@ def _index(axis: Axis, values: Floats) -> Ints:
 def _span(axis: Axis, index: Ints) -> AxisPlan:
     from scipy import sparse  # noqa: PLC0415
 
-    start, stop = max(int(index.min()) - 1, 0), min(int(index.max()) + 2, axis.size)
+    start, stop = int(index.min()) - 1, int(index.max()) + 2
+    if not axis.period:  # round the earth the last cell neighbours the first
+        start, stop = max(start, 0), min(stop, axis.size)
     empty = sparse.csr_matrix((0, stop - start), dtype=np.float64)
-    return AxisPlan(start, stop, empty, np.empty(0, dtype=np.int64), axis.order[start:stop])
+    order = axis.order[np.arange(start, stop) % axis.size]
+    return AxisPlan(start, stop, empty, np.empty(0, dtype=np.int64), order)
 
 
 def _from(index: Ints, start: int) -> Ints:
@@ -246,7 +249,8 @@ def _from(index: Ints, start: int) -> Ints:
 
 
 def _neighbours(axis: Axis, plan: AxisPlan, held: Ints, values: Floats) -> tuple[Ints, Floats]:
-    centres = axis.centres[plan.start : plan.stop]
+    turns, place = np.divmod(np.arange(plan.start, plan.stop), axis.size)
+    centres = axis.centres[place] + axis.period * turns
     if centres.size == 1:
         return np.zeros_like(held), np.zeros(held.shape)
     low = np.where(values < centres[held], held - 1, held)

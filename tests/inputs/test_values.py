@@ -167,6 +167,38 @@ def test_33_values_outside_the_valid_range_are_masked(bench, attrs):
     assert np.isnan(bench.layer("temperature", path).values(WHOLE)[0, 0])
 
 
+def test_33_a_fractional_valid_range_of_packed_numbers_is_one_of_what_they_mean(bench):
+    values = np.full((4, 6), 2800, np.int16)
+    values[0, :2] = 3300, 3301
+    path = bench.field(
+        "t.nc", values, LAT, LON, units="K", scale_factor=0.1, valid_range=np.array([200.0, 330.0])
+    )
+    found = bench.layer("temperature", path).values(WHOLE)
+    assert found[0, 0] == pytest.approx(330.0)
+    assert np.isnan(found).sum() == 1
+    assert np.isnan(found[0, 1])
+
+
+def test_bytes_marked_as_unsigned_are_read_so_and_their_attributes_too(bench):
+    values = np.full((4, 6), 100, np.int8)
+    values[0, :3] = -1, -56, -55  # 255, 200 and 201 as bytes are meant
+    path = bench.field(
+        "v.nc",
+        values,
+        LAT,
+        LON,
+        units="1",
+        scale_factor=0.005,
+        missing_value=np.int8(-1),
+        valid_max=np.int8(-56),
+        _Unsigned="true",
+    )
+    found = bench.layer("vegetation", path, units="1").values(WHOLE)
+    np.testing.assert_array_equal(np.isnan(found[0]), [True, False, True, False, False, False])
+    assert found[0, 1] == pytest.approx(1.0)
+    assert found[0, 3] == pytest.approx(0.5)
+
+
 def test_36_infinities_are_masked_and_counted(bench):
     values = np.full((4, 6), 500.0, np.float32)
     values[0, :4] = np.inf, -np.inf, 1e-42, -0.0
@@ -190,11 +222,21 @@ def test_36_negative_runoff_counts_as_zero_and_is_flagged(bench):
 
 def test_37_a_layer_without_any_data_gives_zero_totals_and_an_empty_map(bench):
     path = bench.tif("r.tif", np.full((4, 6), np.nan, np.float32), unit="mm yr-1")
-    result = bench.run({"runoff": {"path": str(path)}})
+    layers = {"runoff": {"path": str(path)}}
+    assert any("runoff: no cell looked at has data" in note for note in bench.plan(layers).notes)
+    result = bench.run(layers)
     assert result.totals.consumption.sum() == 0
     assert result.totals.valid_area.sum() == 0
     with rasterio.open(result.folder / "maps" / "drawdown.tif") as file:
         assert np.isnan(file.read(1)).all()
+
+
+def test_37_a_geological_map_that_maps_no_cell_is_refused_with_what_to_check(bench):
+    path = bench.tif("none.tif", np.zeros((4, 6), np.uint8), nodata=0)
+    lithology = {"path": str(path), "legend": str(bench.legend())}
+    with pytest.raises(ValuesError, match="not a single cell") as caught:
+        bench.plan({"lithology": lithology})
+    assert "check nodata" in str(caught.value)
 
 
 @pytest.mark.parametrize("dtype", ["int8", "uint16", "int64", "uint64", "float64"])

@@ -155,6 +155,28 @@ def test_a_projected_grid_takes_a_lon_lat_layer_the_same_in_any_window(bench, cr
         np.testing.assert_array_equal(layer.values(window), part)
 
 
+@pytest.mark.parametrize("resampling", ["auto", "nearest"])
+def test_from_another_crs_the_seam_of_a_global_file_is_no_edge(bench, resampling):
+    lat, lon = np.arange(85.0, -90, -10), np.arange(-175.0, 180, 10)
+    values = 280.0 + 10.0 * np.cos(np.deg2rad(lon + 50.0)) + 0.0 * lat[:, None]
+    seam = bench.field("seam.nc", values, lat, lon, units="K")
+    rolled = bench.field(
+        "rolled.nc", np.roll(values, 18, 1), lat, np.arange(5.0, 360, 10), units="K"
+    )
+    grid = bench.tif(
+        "p.tif", np.full((8, 30), 280.0), unit="K", crs="EPSG:32660",
+        transform=from_origin(300_000, 4_000_000, 50_000, 50_000),
+    )  # fmt: skip
+    found = [
+        bench.layer("temperature", path, grid=grid, resampling=resampling).values(
+            Window(0, 0, 8, 30)
+        )
+        for path in (seam, rolled)
+    ]
+    np.testing.assert_allclose(found[0], found[1], atol=1e-9)
+    assert np.ptp(found[0]) > 1.0
+
+
 HALF = np.arange(24, dtype=np.float32).reshape(4, 6) + 280
 
 

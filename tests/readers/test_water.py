@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+import json
+from pathlib import Path
+
 import cftime
 import numpy as np
 import pandas as pd
@@ -9,6 +12,7 @@ import pyet
 import pytest
 
 import mapper
+from mapper.cli import main
 from mapper.engine import read_inputs
 from mapper.errors import JobError
 from mapper.evaporation import (
@@ -17,7 +21,7 @@ from mapper.evaporation import (
     extraterrestrial_radiation,
     oudin_day,
 )
-from mapper.grid import Window
+from mapper.grid import Window, cell_areas
 from mapper.hydrology import CURVES, derive_runoff, evapotranspiration, zhang_2001
 from mapper.planning import make_plan
 
@@ -171,6 +175,34 @@ def test_a_job_derives_runoff_by_each_method(bench, method, potential):
     )
     np.testing.assert_allclose(found, expected, rtol=1e-9)
     assert mapper.run(job).totals.consumption.sum() > 0
+
+
+def test_the_record_and_the_terminal_balance_the_water_over_the_mapped_land(bench, capsys):
+    rock = np.ones((4, 6), np.uint8)
+    rock[0], rock[1, :3] = 0, 3  # no rock in the north; three cells of a lake
+    path = bench.tif("some_rock.tif", rock, nodata=0)
+    legend = bench.legend("code,rock\n1,basalt\n3,water\n")
+    job = climate_job(
+        bench,
+        {"method": "turc-1954"},
+        monthly=False,
+        lithology={"path": str(path), "legend": str(legend)},
+    )
+    assert main(["run", job.path]) == 0
+    found = json.loads((Path(job.folder) / "run.json").read_text())["result"]["water_balance"]
+    areas = np.repeat(cell_areas(make_plan(job).grid, WHOLE).reshape(4, -1)[:, :1], 6, axis=1)
+    land = areas[rock == 1].sum()
+    runoff = derive_runoff("turc-1954", np.array([1500.0]), np.array([296.0]))[0]
+    assert found["land_area_km2"] == pytest.approx(land / 1e6, rel=1e-12)
+    assert found["precipitation_km3_per_yr"] == pytest.approx(1.5 * land / 1e9, rel=1e-9)
+    assert found["runoff_km3_per_yr"] == pytest.approx(runoff / 1e3 * land / 1e9, rel=1e-7)
+    assert found["closure"] < 1e-14
+    line = next(one for one in capsys.readouterr().out.splitlines() if "runs off" in one)
+    assert f"({100 * runoff / 1500:.0f} % of it)" in line
+
+
+def test_runoff_that_is_given_has_no_balance(bench):
+    assert bench.run().totals.water == {}
 
 
 def test_a_curve_without_potential_evapotranspiration_is_refused_with_two_ways_out(bench):
