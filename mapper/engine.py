@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
+from mapper.classes import SUMMED, ClassLayer, cell_amounts, sum_classes
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import WaterSpec
 from mapper.laws import Capped
@@ -84,6 +85,7 @@ class Plan:
     water: WaterSpec = field(default_factory=WaterSpec)
     month_shares: tuple[float, ...] = ()
     """Parts of a year that the twelve months take, where the rates of months are averaged."""
+    classes: tuple[ClassLayer, ...] = ()
 
     def parts_of_year(self) -> list[tuple[int | None, float]]:
         """Months and their parts of the year where rates are averaged, else the year whole."""
@@ -104,7 +106,7 @@ class BlockSums(NamedTuple):
     drawdown [mol yr-1]. The others are by region and rock, shape (n_regions, n_rocks, LIMBS):
     rock area, area with a result, consumption, and the area under each of `COUNTED_FLAGS`.
     ``laws`` holds for each alternative law consumption, area with a result, and area outside its
-    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS).
+    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS). ``classes`` is from `sum_classes`.
     """
 
     area: Counts
@@ -114,6 +116,7 @@ class BlockSums(NamedTuple):
     consumption: Counts
     flagged: Counts
     laws: Counts
+    classes: Counts
 
     def plus(self, other: BlockSums) -> BlockSums:
         """Both sums together."""
@@ -237,6 +240,10 @@ def evaluate_block_states(
     if others:
         laws = [_sum_alternative(plan, one, ground) for one in others]
         sums = sums._replace(laws=np.stack(laws))
+    if plan.classes:
+        good = ~np.isnan(result.rate)[ground.entry]
+        cells = cell_amounts(areas, (ground.cell[good], ground.area[good]), maps[:2])
+        sums = sums._replace(classes=sum_classes(plan.classes, plan.grid, window, cells))
     if layout is None:
         return maps, sums, None
     counts = [
@@ -439,6 +446,7 @@ def _sum_block(
         consumption=add_up(runs, rate * held, n_keys, exponent).reshape(shape),
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
         laws=np.zeros((0, 3, *shape), dtype=np.int64),
+        classes=np.zeros((len(SUMMED), 0, LIMBS), dtype=np.int64),
     )
 
 

@@ -12,6 +12,7 @@ from typing import Any
 
 from mapper.accounting import DAYS_PER_YEAR, MOLAR_MASS
 from mapper.engine import Plan
+from mapper.exports.classes import describe_classes
 from mapper.grid import parse_crs
 from mapper.job import Job
 from mapper.layers.layer import QUANTITY, Layer
@@ -54,6 +55,7 @@ def input_files(job: Job) -> list[str]:
         for path in (*(spec.paths or (spec.path,)), spec.legend, spec.table)
         if path
     ]
+    paths += [path for spec in job.classes.values() for path in (spec.path, spec.legend) if path]
     if job.regions is not None:
         paths.append(job.regions.path)
     return list(dict.fromkeys(paths))
@@ -80,6 +82,9 @@ def describe_job(job: Job) -> dict[str, Any]:
         for key in ("path", "legend", "table"):
             spec[key] = Path(spec[key]).name if spec[key] else None
         spec["paths"] = [Path(one).name for one in spec["paths"]]
+    for spec in described["classes"].values():
+        for key in ("path", "legend"):
+            spec[key] = Path(spec[key]).name if spec[key] else None
     if described["regions"]:
         described["regions"]["path"] = Path(described["regions"]["path"]).name
     return described
@@ -115,6 +120,7 @@ def describe_plan(plan: Plan) -> dict[str, Any]:
             }
             for other in plan.scheme.alternatives
         ],
+        "classes": {one.spec.name: describe_classes(one) for one in plan.classes},
         "regions": None
         if plan.regions is None
         else {"count": len(plan.regions.names), "notes": list(plan.regions.notes)},
