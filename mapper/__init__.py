@@ -12,9 +12,10 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from mapper.dataset import drawdown, open_layers
+    from mapper.inspection import inspect
     from mapper.job import load_job
     from mapper.laws import LAWS
-    from mapper.pipeline import inspect, run
+    from mapper.pipeline import run
 
 __all__ = ["LAWS", "drawdown", "inspect", "load_job", "open_layers", "run"]
 
@@ -32,7 +33,7 @@ for _name, _value in _GDAL_SETTINGS.items():
 _HOMES = {
     "LAWS": "mapper.laws",
     "drawdown": "mapper.dataset",
-    "inspect": "mapper.pipeline",
+    "inspect": "mapper.inspection",
     "load_job": "mapper.job",
     "open_layers": "mapper.dataset",
     "run": "mapper.pipeline",

@@ -14,7 +14,7 @@ if TYPE_CHECKING:
     import numpy as np
     from numpy.typing import NDArray
 
-    from mapper.pipeline import RunResult
+    from mapper.exports.contents import RunResult
     from mapper.ranking import Ranking
     from mapper.uncertainty.spread import SpreadFound
 
@@ -233,7 +233,7 @@ def _top_regions(result: RunResult) -> list[str]:
 
 
 def _inspect(chosen: argparse.Namespace) -> int:
-    from mapper.pipeline import inspect  # noqa: PLC0415
+    from mapper.inspection import inspect  # noqa: PLC0415
     from mapper.planning import open_job  # noqa: PLC0415
 
     if chosen.write_legend:

@@ -145,13 +145,36 @@ def _cover_tile(
             target[at_row, at_col] = MIXED
 
     for position in _touching(polygons.bounds, tile):
-        share = cover_tile(polygons.edges[position], tile)[part]
+        edges = polygons.edges[position]
+        if not _crosses(edges, tile):  # most tiles: the polygon holds all of it or none
+            if not _holds(edges, tile):
+                continue
+            if (target == NONE).all():
+                target[:] = position
+                continue
+        share = cover_tile(edges, tile)[part]
         touched = share > 0.0
         # a cell that an earlier polygon fills becomes divided: overlaps show as cover above one
         enter(touched & (target >= 0), target.copy(), np.ones(target.shape))
         alone = (share == 1.0) & (target == NONE)
         target[alone] = position
         enter(touched & ~alone, int(position), share)
+
+
+def _crosses(edges: Floats, tile: Window) -> bool:
+    """Whether some edge may pass through a tile."""
+    u0, v0, u1, v1 = edges.T
+    apart = (np.maximum(u0, u1) < tile.col) | (np.minimum(u0, u1) > tile.col_stop)
+    apart |= (np.maximum(v0, v1) < tile.row) | (np.minimum(v0, v1) > tile.row_stop)
+    return not bool(apart.all())
+
+
+def _holds(edges: Floats, tile: Window) -> bool:
+    """Whether a tile that no edge passes through lies inside: edges left of its middle wind."""
+    u0, v0, u1, v1 = edges.T
+    middle = tile.row + 0.5 * tile.n_rows
+    up = ((v0 <= middle) != (v1 <= middle)) & (np.maximum(u0, u1) < tile.col)
+    return bool(np.sign(v1 - v0)[up].sum() != 0)
 
 
 def _touching(bounds: Floats, tile: Window) -> Ints:

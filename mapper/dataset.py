@@ -13,8 +13,8 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share, to_rate
-from mapper.engine import evaluate_rock
 from mapper.errors import LawError
+from mapper.evaluation import evaluate_rock
 from mapper.grid import Grid, Window
 from mapper.hydrology import derive_runoff
 from mapper.job import Job

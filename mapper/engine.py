@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
-from enum import IntFlag
 from typing import NamedTuple
 
 import numpy as np
@@ -12,63 +11,35 @@ from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
 from mapper.classes import SUMMED, ClassLayer, cell_amounts, sum_classes
+from mapper.coverage import MIXED
+from mapper.evaluation import (
+    COUNTED_FLAGS,
+    OUTSIDE_RANGE,
+    Bits,
+    Flag,
+    RockResult,
+    bit,
+    evaluate_rock,
+)
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import WaterSpec
-from mapper.laws import Capped
 from mapper.layers.layer import Layer
 from mapper.layers.lithology import Lithology, RockCells
 from mapper.layers.water import derive_water
 from mapper.regions import RegionCells, Regions, region_cells
 from mapper.rocks import ROCK_NAMES, ROCKS
-from mapper.scheme import Alternative, RockLaw, Scheme
+from mapper.scheme import Alternative, Scheme
 from mapper.states import AXES as STATE_AXES
 from mapper.states import StateCounts, StateLayout, count_states, merge_states
-from mapper.sums import LIMBS, Counts, Runs, add_up, runs_of, unit_exponent
+from mapper.sums import LIMBS, Counts, Runs, add_repeated, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
+
+
 Ints = NDArray[np.int64]
-Bits = NDArray[np.uint8]
+
 
 N_ROCKS = len(ROCK_NAMES)
-
-
-class Flag(IntFlag):
-    """What a reader should know about a cell, as bits of ``maps/flags.tif``."""
-
-    NO_DATA = 1
-    PARTLY_NO_DATA = 2
-    RUNOFF_OUTSIDE = 4
-    TEMPERATURE_OUTSIDE = 8
-    OTHER_OUTSIDE = 16
-    CAPPED = 32
-    NEGATIVE_RUNOFF = 64
-    NOT_FINITE = 128
-
-
-FLAG_MEANING: Mapping[Flag, str] = {
-    Flag.NO_DATA: "no result: lithology or a layer that the law reads has no data",
-    Flag.PARTLY_NO_DATA: "a part of the cell has no result",
-    Flag.RUNOFF_OUTSIDE: "runoff outside the law's range",
-    Flag.TEMPERATURE_OUTSIDE: "temperature outside the law's range",
-    Flag.OTHER_OUTSIDE: "another layer outside the law's range",
-    Flag.CAPPED: "held at the supply limit",
-    Flag.NEGATIVE_RUNOFF: "runoff below zero, taken as zero",
-    Flag.NOT_FINITE: "the law gave no finite number",
-}
-
-OUTSIDE_RANGE = Flag.RUNOFF_OUTSIDE | Flag.TEMPERATURE_OUTSIDE | Flag.OTHER_OUTSIDE
-
-COUNTED_FLAGS: tuple[Flag, ...] = (
-    Flag.RUNOFF_OUTSIDE,
-    Flag.TEMPERATURE_OUTSIDE,
-    Flag.OTHER_OUTSIDE,
-    OUTSIDE_RANGE,
-    Flag.CAPPED,
-    Flag.NEGATIVE_RUNOFF,
-    Flag.NOT_FINITE,
-)
-"""Causes whose area is added up; ground under two causes of one entry counts once in that entry.
-The area without data is what is left of the rock's area."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -131,69 +102,6 @@ class BlockMaps(NamedTuple):
     flags: Bits
 
 
-class RockResult(NamedTuple):
-    """The rate of one rock's entries [mol m-2 yr-1], NaN without a result, and their flags."""
-
-    rate: Floats
-    flags: Bits
-
-
-def evaluate_rock(law: RockLaw | None, inputs: Mapping[str, Floats]) -> RockResult:
-    """Evaluate a law on one rock's entries.
-
-    Parameters
-    ----------
-    law : None for a class that does not weather, whose rate is zero.
-    inputs : layers in inner units, each of shape (n,).
-
-    Notes
-    -----
-    Runoff below zero is taken as zero. Entries outside the law's ranges are computed and flagged.
-    """
-    n = next(iter(inputs.values())).size if inputs else 0
-    flags = np.zeros(n, dtype=np.uint8)
-    if law is None:
-        return RockResult(np.zeros(n), flags)
-    read: list[Floats] = []
-    known = np.ones(n, dtype=np.bool_)
-    for one in law.law.inputs:
-        values = np.asarray(inputs[one.name], dtype=np.float64)
-        known &= ~np.isnan(values)
-        if one.name == "runoff" and (values < 0).any():
-            flags[values < 0] |= _bit(Flag.NEGATIVE_RUNOFF)
-            values = np.maximum(values, 0.0)
-        outside = (values < one.low) | (values > one.high)
-        flags[outside] |= _bit(_outside_flag(one.name))
-        read.append(values)
-    with np.errstate(all="ignore"):  # what is not finite is flagged below, cell by cell
-        rate, held = _rate(law, read)
-    rate = np.broadcast_to(rate, (n,))
-    if held is not None:
-        flags[held] |= _bit(Flag.CAPPED)
-    bad = known & ~np.isfinite(rate)
-    flags[bad] |= _bit(Flag.NOT_FINITE)
-    flags[~known] = 0
-    return RockResult(np.where(known & ~bad, rate, np.nan), flags)
-
-
-def _rate(law: RockLaw, layers: list[Floats]) -> tuple[Floats, NDArray[np.bool_] | None]:
-    """The law's rate, and where the supply limit held it, if the law has one."""
-    function = law.law.function
-    if isinstance(function, Capped):
-        return function.hold(*layers, **law.values)
-    return function(*layers, **law.values), None
-
-
-def _bit(flag: Flag) -> np.uint8:
-    return np.uint8(int(flag))
-
-
-def _outside_flag(name: str) -> Flag:
-    if name == "runoff":
-        return Flag.RUNOFF_OUTSIDE
-    return Flag.TEMPERATURE_OUTSIDE if name == "temperature" else Flag.OTHER_OUTSIDE
-
-
 def read_inputs(plan: Plan, window: Window, month: int | None = None) -> dict[str, Floats]:
     """The layers that the laws read, on a window, each of shape (n_cells,).
 
@@ -234,9 +142,10 @@ def evaluate_block_states(
     result, *others = _evaluate_window(plan, rocks, parts)
     maps = _to_cells(rocks, result.rate, result.flags, window)
     regions = region_cells(plan.regions, plan.grid, window)
-    areas = np.broadcast_to(cell_areas(plan.grid, window), window.shape).ravel()
+    row_areas = cell_areas(plan.grid, window)
+    areas = np.broadcast_to(row_areas, window.shape).ravel()
     ground = _split_ground(rocks, regions, areas)
-    sums = _sum_block(plan, result, ground, (regions, areas, maps))
+    sums = _sum_block(plan, result, ground, (regions, row_areas, maps))
     if others:
         laws = [_sum_alternative(plan, one, ground) for one in others]
         sums = sums._replace(laws=np.stack(laws))
@@ -311,6 +220,9 @@ def _evaluate_window(
     ----------
     parts : each part's share of the year and its layers.
     """
+    if not plan.month_shares and not plan.scheme.alternatives:
+        ((_, inputs),) = parts
+        return [RockResult(*_evaluate_entries(plan.scheme, rocks, inputs))]
     n = rocks.cell.size
     every = (None, *plan.scheme.alternatives)
     rates = [np.zeros(n) for _ in every]
@@ -347,7 +259,7 @@ def _sum_alternative(plan: Plan, result: RockResult, ground: _Ground) -> Counts:
     rows = (
         np.where(good, rate, 0.0) * held,
         np.where(good, held, 0.0),
-        np.where((flags & _bit(OUTSIDE_RANGE)) != 0, held, 0.0),
+        np.where((flags & bit(OUTSIDE_RANGE)) != 0, held, 0.0),
     )
     runs = runs_of(ground.key)
     n_keys = plan.n_regions * N_ROCKS
@@ -361,14 +273,13 @@ def _evaluate_entries(
     rate = np.empty(rocks.cell.size)
     flags = np.zeros(rocks.cell.size, dtype=np.uint8)
     for rock, part in rock_parts(rocks):
-        cells = rocks.cell[part]
         law = scheme.by_rock.get(rock)
-        names = law.law.input_names if law else ()
-        taken = {name: inputs[name][cells] for name in names}
         if law is None:
             rate[part] = 0.0
-        else:
-            rate[part], flags[part] = evaluate_rock(law, taken)
+            continue
+        cells = rocks.cell.take(part)
+        taken = {name: inputs[name].take(cells) for name in law.law.input_names}
+        rate[part], flags[part] = evaluate_rock(law, taken)
     return rate, flags
 
 
@@ -384,6 +295,9 @@ def rock_parts(rocks: RockCells) -> list[tuple[str, Ints]]:
     ]
 
 
+WHOLE = 1.0 - 1e-6
+"""Shares from here on count as the whole cell."""
+
 KEPT = np.array([drawdown_share(ROCKS[name]) for name in ROCK_NAMES])
 """Share of the short-term uptake that lasts, by rock [1]."""
 
@@ -391,26 +305,28 @@ KEPT = np.array([drawdown_share(ROCKS[name]) for name in ROCK_NAMES])
 def _to_cells(rocks: RockCells, rate: Floats, flags: Bits, window: Window) -> BlockMaps:
     """Weigh each cell's rocks by their shares; what has no result counts as no data."""
     n, cell = window.n_cells, rocks.cell
-    good = ~np.isnan(rate)
-    share = np.where(good, rocks.share, 0.0)
-    taken = np.where(good, rate, 0.0) * share
     cell_flags = np.zeros(n, dtype=np.uint8)
-    consumption: Floats = np.zeros(n)
-    drawdown: Floats = np.zeros(n)
-    valid: Floats = np.zeros(n)
+    consumption: Floats = np.full(n, np.nan)
+    drawdown: Floats = np.full(n, np.nan)
     if (cell[1:] > cell[:-1]).all():  # one rock a cell: nothing to add
-        consumption[cell], drawdown[cell], valid[cell] = taken, taken * KEPT[rocks.rock], share
+        taken = rate * rocks.share
+        consumption[cell], drawdown[cell] = taken, taken * KEPT.take(rocks.rock)
         cell_flags[cell] = flags
+        partly = cell[rocks.share < WHOLE] if rocks.share.size else cell
+        cell_flags[partly] |= bit(Flag.PARTLY_NO_DATA)
     else:
-        consumption += np.bincount(cell, weights=taken, minlength=n)
-        drawdown += np.bincount(cell, weights=taken * KEPT[rocks.rock], minlength=n)
-        valid += np.bincount(cell, weights=share, minlength=n)
+        good = ~np.isnan(rate)
+        share = np.where(good, rocks.share, 0.0)
+        taken = np.where(good, rate, 0.0) * share
+        valid = np.bincount(cell, weights=share, minlength=n)
+        held = valid > 0.0
+        consumption[held] = np.bincount(cell, weights=taken, minlength=n)[held]
+        drawdown[held] = np.bincount(cell, weights=taken * KEPT[rocks.rock], minlength=n)[held]
         np.bitwise_or.at(cell_flags, cell, flags)
-    empty = valid <= 0.0
-    consumption[empty] = np.nan
-    drawdown[empty] = np.nan
-    cell_flags[empty] |= _bit(Flag.NO_DATA)
-    cell_flags[~empty & (valid < 1.0 - 1e-6)] |= _bit(Flag.PARTLY_NO_DATA)
+        cell_flags[valid < WHOLE] |= bit(Flag.PARTLY_NO_DATA)
+    empty = np.isnan(consumption)
+    cell_flags[empty] &= ~bit(Flag.PARTLY_NO_DATA)
+    cell_flags[empty] |= bit(Flag.NO_DATA)
     shape = window.shape
     return BlockMaps(consumption.reshape(shape), drawdown.reshape(shape), cell_flags.reshape(shape))
 
@@ -421,11 +337,12 @@ def _sum_block(
     ground: _Ground,
     cells: tuple[RegionCells, Floats, BlockMaps],
 ) -> BlockSums:
-    regions, areas, maps = cells
+    regions, row_areas, maps = cells
+    window = Window(0, 0, *maps.flags.shape)
+    areas = np.broadcast_to(row_areas, window.shape).ravel()
     exponent = unit_exponent(plan.grid)
     n_regions = plan.n_regions
-    every = regions.split(np.arange(areas.size))
-    area = add_up(every.region, areas[every.entry] * every.part, n_regions, exponent)
+    area = _sum_regions(plan, regions, row_areas, window)
     key, held = ground.key, ground.area
     rate = result.rate[ground.entry]
     good = ~np.isnan(rate)
@@ -450,10 +367,34 @@ def _sum_block(
     )
 
 
+def _sum_regions(plan: Plan, regions: RegionCells, areas: Floats, window: Window) -> Counts:
+    """Area of each region and of 'outside'.
+
+    Divided cells piece by piece, whole ones by counting where the cells of a row are alike.
+
+    Parameters
+    ----------
+    areas : from `cell_areas`.
+    """
+    exponent, n_regions = unit_exponent(plan.grid), plan.n_regions
+    flat = np.broadcast_to(areas, window.shape)
+    divided = regions.split(regions.cell)
+    at = np.unravel_index(regions.cell[divided.entry], window.shape)
+    counts = add_up(divided.region, flat[at] * divided.part, n_regions, exponent)
+    whole = regions.single != MIXED
+    if areas.shape[1] != 1:
+        return counts + add_up(regions.single[whole], flat.ravel()[whole], n_regions, exponent)
+    held = np.where(whole, regions.single, n_regions).reshape(window.shape)
+    keys = held + np.arange(window.n_rows, dtype=np.int32)[:, None] * np.int32(n_regions + 1)
+    times = np.bincount(keys.ravel(), minlength=window.n_rows * (n_regions + 1))
+    times = times.reshape(window.n_rows, n_regions + 1)[:, :-1]
+    return counts + add_repeated(areas[:, 0], times, exponent)
+
+
 def _flagged(
     key: Ints, held: Floats, flags: Bits, flag: Flag, n_keys: int, exponent: int
 ) -> Counts:
-    here = (flags & _bit(flag)) != 0
+    here = (flags & bit(flag)) != 0
     if not here.any():
         return np.zeros((n_keys, LIMBS), dtype=np.int64)
     return add_up(key[here], held[here], n_keys, exponent)

@@ -119,3 +119,49 @@ def _refuse_changes(old: Mapping[str, Any], new: Mapping[str, Any], folder: Path
             where=str(folder),
             fix="--fresh to start over, or --out DIR for another folder",
         )
+
+
+class locked:  # noqa: N801 - reads as a word in a with statement
+    """One run at a time in a folder; a lock left by a process that died does not count."""
+
+    def __init__(self, folder: Path) -> None:
+        self.folder = folder
+        self.path = folder / ".lock"
+
+    def __enter__(self) -> None:
+        try:
+            self.folder.mkdir(parents=True, exist_ok=True)
+            self._refuse_living()
+            self.path.write_text(str(os.getpid()), encoding="utf-8")
+        except RunFolderError:
+            raise
+        except OSError as cause:
+            raise RunFolderError(
+                f"the run folder cannot be written: {cause.strerror or cause}",
+                where=str(self.folder),
+                fix="--out DIR with a folder that may be written",
+            ) from cause
+
+    def _refuse_living(self) -> None:
+        if not self.path.exists():
+            return
+        text = self.path.read_text(encoding="utf-8").strip()
+        if text.isdigit() and int(text) != os.getpid() and _lives(int(text)):
+            raise RunFolderError(
+                f"another run (process {text}) is writing to this folder",
+                where=str(self.folder),
+                fix="wait for it, or --out DIR for another folder",
+            )
+
+    def __exit__(self, *_: object) -> None:
+        self.path.unlink(missing_ok=True)
+
+
+def _lives(process: int) -> bool:
+    try:
+        os.kill(process, 0)
+    except ProcessLookupError:
+        return False
+    except PermissionError:
+        return True
+    return True

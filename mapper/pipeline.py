@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-import json
 import os
 import resource
 import time
-from collections.abc import Callable, Mapping
+from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
@@ -20,20 +19,17 @@ from numpy.typing import NDArray
 from mapper.accounting import to_rate
 from mapper.cluster import connected, finished
 from mapper.engine import BlockSums, Plan, evaluate_block_states
-from mapper.errors import RunFolderError
 from mapper.exports.alternatives import (
     LAW_COLUMNS,
     SPREAD_COLUMNS,
     LawTotals,
-    describe_alternatives,
     law_rows,
     spread_rows,
     to_law_totals,
 )
 from mapper.exports.classes import write_classes
-from mapper.exports.contents import Contents
+from mapper.exports.contents import Contents, RunResult
 from mapper.exports.doubts import (
-    describe_spread,
     rank_totals,
     write_ranking,
     write_sensitivity,
@@ -41,15 +37,7 @@ from mapper.exports.doubts import (
 from mapper.exports.files import write_csv, write_json
 from mapper.exports.handover import clear_earlier, hand_over, list_files
 from mapper.exports.maps import INTERVAL_MAPS, MAPS, MapKind, write_map
-from mapper.exports.record import (
-    CAUTIONS,
-    constants,
-    describe_inputs,
-    describe_job,
-    describe_plan,
-    input_files,
-    versions,
-)
+from mapper.exports.record import describe_run, fingerprint, plain
 from mapper.exports.tables import (
     FLAG_COLUMNS,
     REGION_COLUMNS,
@@ -62,28 +50,22 @@ from mapper.exports.tables import (
     to_totals,
     with_intervals,
 )
-from mapper.grid import Grid, Window, blocks, parse_crs
+from mapper.grid import Grid, Window, blocks
 from mapper.hotspots import COLUMNS as HOTSPOT_COLUMNS
 from mapper.hotspots import find_hotspots, hotspot_rows
 from mapper.job import Job
-from mapper.journal import Journal, open_journal
-from mapper.layers.layer import QUANTITY, Layer
+from mapper.journal import Journal, locked, open_journal
 from mapper.planning import (
-    BASE_MEMORY,
-    BYTES_PER_CELL,
     DEFAULT_MEMORY,
-    Sample,
     block_shape,
     make_plan,
-    sample_layer,
 )
-from mapper.ranking import CLEARLY_AHEAD, Ranking
+from mapper.ranking import Ranking
 from mapper.states import StateCounts, StateLayout, merge_states
 from mapper.sums import unit_exponent
 from mapper.uncertainty.cells import MAP_DRAWS, cell_intervals, first_draws
 from mapper.uncertainty.propagate import Apply, Samples, Work
 from mapper.uncertainty.spread import Draws, SpreadFound, find_spread, make_draws
-from mapper.units import INNER_UNIT
 
 CLOSURE_LIMIT = 1e-12
 
@@ -103,20 +85,6 @@ class Engine:
     threads: int = field(default_factory=lambda: os.cpu_count() or 1)
     scheduler: str | None = None
     memory: float = DEFAULT_MEMORY
-
-
-@dataclass(frozen=True)
-class RunResult:
-    """What a run left: its folder, its totals, and what it found out about itself."""
-
-    folder: Path
-    totals: Totals
-    checks: Mapping[str, float]
-    seconds: float
-    resumed_blocks: int
-    spread: SpreadFound | None = None
-    ranking: Ranking | None = None
-    laws: tuple[LawTotals, ...] = ()
 
 
 def _silent(stage: str, done: int, total: int) -> None:
@@ -152,8 +120,8 @@ def run(
     draws = make_draws(job, plan)
     todo = _todo(job, plan, draws)
     windows = blocks(plan.grid, block_shape(plan, engine.threads, engine.memory))
-    with _locked(folder):
-        journal = open_journal(folder, _fingerprint(job, windows), fresh=fresh)
+    with locked(folder):
+        journal = open_journal(folder, fingerprint(job, windows), fresh=fresh)
         resumed = _compute_blocks(todo, windows, journal, engine, progress)
         sums = _reduce(journal, len(windows))
         names = plan.regions.names if plan.regions is not None else ()
@@ -175,91 +143,12 @@ def run(
         spots = _write_hotspots(job, folder)
         seconds = time.monotonic() - began
         result = RunResult(folder, found, checks, seconds, resumed, spread, ranking, laws)
-        contents = Contents(folder, plan, found, _record(job, plan, result), spots)
+        contents = Contents(folder, plan, found, describe_run(job, plan, result), spots)
         hand_over(contents, job.write)
         result = replace(result, seconds=time.monotonic() - began)
         _write_record(contents, result)
         journal.clear()
     return result
-
-
-class _locked:  # noqa: N801 - reads as a word in a with statement
-    """One run at a time in a folder; a lock left by a process that died does not count."""
-
-    def __init__(self, folder: Path) -> None:
-        self.folder = folder
-        self.path = folder / ".lock"
-
-    def __enter__(self) -> None:
-        try:
-            self.folder.mkdir(parents=True, exist_ok=True)
-            self._refuse_living()
-            self.path.write_text(str(os.getpid()), encoding="utf-8")
-        except RunFolderError:
-            raise
-        except OSError as cause:
-            raise RunFolderError(
-                f"the run folder cannot be written: {cause.strerror or cause}",
-                where=str(self.folder),
-                fix="--out DIR with a folder that may be written",
-            ) from cause
-
-    def _refuse_living(self) -> None:
-        if not self.path.exists():
-            return
-        text = self.path.read_text(encoding="utf-8").strip()
-        if text.isdigit() and int(text) != os.getpid() and _lives(int(text)):
-            raise RunFolderError(
-                f"another run (process {text}) is writing to this folder",
-                where=str(self.folder),
-                fix="wait for it, or --out DIR for another folder",
-            )
-
-    def __exit__(self, *_: object) -> None:
-        self.path.unlink(missing_ok=True)
-
-
-def _lives(process: int) -> bool:
-    try:
-        os.kill(process, 0)
-    except ProcessLookupError:
-        return False
-    except PermissionError:
-        return True
-    return True
-
-
-def _fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
-    """What must be the same for finished blocks to be used again, key by key of the job."""
-    described = {key: one for key, one in describe_job(job).items() if key not in _NO_NUMBERS}
-    files = {
-        f"the file {Path(path).name} ({at})": [
-            Path(path).stat().st_size, Path(path).stat().st_mtime_ns
-        ]
-        for at, path in enumerate(input_files(job), start=1)
-    }  # fmt: skip
-    return {
-        **_flat(described),
-        **{f"version of {name}": one for name, one in versions().items()},
-        "blocks": [len(windows), *windows[0].shape],
-        **files,
-    }
-
-
-_NO_NUMBERS = ("title", "path", "folder")
-"""Keys of a job that change no number."""
-
-
-def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
-    """Nested keys as one dotted key each."""
-    found: dict[str, str] = {}
-    for key, value in described.items():
-        name = f"{before}{key}"
-        if isinstance(value, Mapping) and value:
-            found |= _flat(value, f"{name}.")
-        else:
-            found[name] = json.dumps(value, default=str)
-    return found
 
 
 def _in_threads(threads: int) -> Apply:
@@ -455,28 +344,6 @@ def _write_tables(
         write_ranking(tables / "ranking.csv", ranking, drawn=spread is not None)
 
 
-def _record(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
-    found = result.totals
-    return {
-        "title": job.title,
-        "cautions": list(CAUTIONS),
-        "result": {
-            "consumption_t_per_yr": float(found.consumption.sum()),
-            "drawdown_t_per_yr": float(found.drawdown.sum()),
-            "valid_area_km2": float(found.valid_area.sum()),
-            "area_under_flag_km2": found.flagged,
-            "between_laws": describe_alternatives(result.laws),
-        },
-        "checks": dict(result.checks),
-        **_describe_doubts(job, result),
-        "job": describe_job(job),
-        **describe_plan(plan),
-        "inputs": describe_inputs(job),
-        "versions": versions(),
-        "constants": constants(),
-    }
-
-
 def _write_record(contents: Contents, result: RunResult) -> None:
     record = {
         **contents.record,
@@ -484,7 +351,7 @@ def _write_record(contents: Contents, result: RunResult) -> None:
         "seconds": round(result.seconds, 3),
         "peak_memory_mb": round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, 1),
     }
-    write_json(result.folder / "run.json", _plain(record))
+    write_json(result.folder / "run.json", plain(record))
 
 
 def _write_hotspots(job: Job, folder: Path) -> gpd.GeoDataFrame | None:
@@ -494,140 +361,3 @@ def _write_hotspots(job: Job, folder: Path) -> gpd.GeoDataFrame | None:
     frame = find_hotspots(folder / "maps" / "drawdown.tif", job.ranking.hotspots)
     write_csv(folder / "tables" / "hotspots.csv", HOTSPOT_COLUMNS, hotspot_rows(frame))
     return frame
-
-
-def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
-    """What the record says of draws and ranking, where the job asks for them."""
-    described: dict[str, Any] = {}
-    if job.uncertainty is not None and result.spread is not None:
-        described["uncertainty"] = describe_spread(job.uncertainty, result.spread)
-    if result.ranking is not None:
-        described["ranking"] = {
-            "left_out": dict(result.ranking.left_out),
-            "told_apart_from": CLEARLY_AHEAD,
-        }
-    return described
-
-
-def _plain(value: Any) -> Any:
-    """Turn what JSON does not know into what it does."""
-    if isinstance(value, Mapping):
-        return {str(key): _plain(one) for key, one in value.items()}
-    if isinstance(value, list | tuple):
-        return [_plain(one) for one in value]
-    if isinstance(value, float) and not np.isfinite(value):
-        return None
-    return value
-
-
-@dataclass(frozen=True)
-class Inspection:
-    """What a job is and what its run will cost."""
-
-    job: Job
-    plan: Plan
-    samples: Mapping[str, Sample]
-
-    def lines(self) -> list[str]:
-        """The inspection as text."""
-        grid = self.plan.grid
-        n_blocks = len(blocks(grid, block_shape(self.plan)))
-        unit = "degrees" if grid.is_geographic else "CRS units"
-        lines = [
-            self.job.title,
-            f"grid        {grid.n_rows} x {grid.n_cols} cells of {grid.dx:g} x {grid.dy:g} {unit}, "
-            f"{parse_crs(grid.crs).name}",
-            _lithology_line(self.plan),
-        ]
-        lines += [
-            _layer_line(layer, self.samples[name]) for name, layer in self.plan.layers.items()
-        ]
-        lines += [_water_line(self.plan)] if "runoff" not in self.plan.layers else []
-        lines += [_region_line(self.plan)]
-        lines += [
-            f"law         {rock}: {one.law.name}"
-            + (f"; {'; '.join(one.changed)}" if one.changed else "")
-            for rock, one in self.plan.scheme.by_rock.items()
-        ]
-        lines += [f"note        {note}" for note in self.plan.notes]
-        lines += [
-            f"alternative {one.name}, weight {one.weight:g}: in place of "
-            f"{self.plan.scheme.name} on {', '.join(one.replaced)}"
-            + (f"; not on {', '.join(one.kept)}" if one.kept else "")
-            for one in self.plan.scheme.alternatives
-        ]
-        lines += [_cost_line(grid.n_cells, n_blocks, block_shape(self.plan))]
-        return lines
-
-
-SECONDS_PER_MILLION_CELLS = 0.6  # on one processor, measured on the island; a rough guide only
-
-
-def inspect(job: Job) -> Inspection:
-    """Look at a job without running it.
-
-    Raises
-    ------
-    MapperError, or ManyProblemsError with every problem that can be found before the run.
-    """
-    plan = make_plan(job)
-    make_draws(job, plan)  # refuses spreads that cannot be drawn
-    samples = {name: sample_layer(layer) for name, layer in plan.layers.items()}
-    return Inspection(job, plan, samples)
-
-
-_HOW = {
-    "same": "on the grid's own cells",
-    "nearest": "nearest cell",
-    "bilinear": "bilinear between cell centres",
-    "mean": "mean weighted by area",
-    "points": "another CRS: sampled at points of each cell",
-}
-
-
-def _layer_line(layer: Layer, sample: Sample) -> str:
-    source = layer.source
-    unit = INNER_UNIT[QUANTITY[layer.name]]
-    lie = f"{source.shape[0]} x {source.shape[1]} cells of {source.x.step:g}"
-    said = "job" if layer.spec.units else "file"
-    return (
-        f"{layer.name:11} {Path(source.path).name}: {lie}, {parse_crs(source.crs).name}; "
-        f"unit {layer.conversion.unit} ({said}); {sample.low:.4g} .. {sample.median:.4g} .. "
-        f"{sample.high:.4g} {unit} on {100 * sample.coverage:.1f} % of the grid; {_HOW[layer.how]}"
-    )
-
-
-def _lithology_line(plan: Plan) -> str:
-    lithology = plan.lithology
-    name = Path(lithology.spec.path).name
-    rocks = ", ".join(lithology.legend.rocks())
-    if lithology.source is None:
-        return f"lithology   {name}: polygons, exact shares of each cell; {rocks}"
-    shares = "codes of the grid's own cells" if lithology.how == "same" else "shares of each cell"
-    if lithology.how == "points":
-        shares = "another CRS: shares by points of each cell"
-    return f"lithology   {name}: {shares}; {rocks}"
-
-
-def _water_line(plan: Plan) -> str:
-    return f"runoff      derived from precipitation and temperature by {plan.water_method}"
-
-
-def _region_line(plan: Plan) -> str:
-    if plan.regions is None:
-        return "regions     none: totals for the whole grid"
-    notes = "; ".join(plan.regions.notes)
-    return f"regions     {len(plan.regions.names)} by exact coverage" + (
-        f"; {notes}" if notes else ""
-    )
-
-
-def _cost_line(n_cells: int, n_blocks: int, shape: tuple[int, int]) -> str:
-    threads = os.cpu_count() or 1
-    seconds = 2 + n_cells / 1e6 * SECONDS_PER_MILLION_CELLS / threads
-    memory = (BASE_MEMORY + shape[0] * shape[1] * BYTES_PER_CELL * threads) / 1e6
-    disk = n_cells * 18 / 1e6
-    return (
-        f"cost        {n_blocks} blocks; about {seconds:.0f} s on {threads} processors, "
-        f"{memory:.0f} MB of memory, {disk:.0f} MB of disk while it runs"
-    )

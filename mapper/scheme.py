@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 
 from mapper.errors import JobError, LawError, Problems
 from mapper.formula import formula_law
-from mapper.job import AlternativeSpec, Job, LawSpec, ParameterSpec
+from mapper.job import Job
 from mapper.laws import (
     CAP,
     CONSUMPTION_PER_TONNE,
@@ -21,6 +21,7 @@ from mapper.laws import (
     compose,
     load_laws,
 )
+from mapper.lawspec import AlternativeSpec, LawSpec, ParameterSpec
 from mapper.rocks import ROCK_NAMES, ROCKS
 
 

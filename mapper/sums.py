@@ -85,6 +85,18 @@ def add_up(keys: NDArray[Any] | Runs, values: Floats, n_keys: int, exponent: int
     return out
 
 
+def add_repeated(values: Floats, times: NDArray[np.int64], exponent: int) -> Counts:
+    """Add values that occur many times over, as `add_up` would one by one.
+
+    Parameters
+    ----------
+    values : shape (n,). times : shape (n, n_keys), how often each occurs under each key; a column
+        may hold 2^31 in all.
+    """
+    limbs = np.stack(_limbs(values, exponent), axis=1).astype(np.int64)
+    return times.T @ limbs
+
+
 def _limbs(values: Floats, exponent: int) -> tuple[Floats, Floats]:
     """Split values into whole counts of the unit, low and high limb."""
     unit = math.ldexp(1.0, exponent)

@@ -13,12 +13,15 @@ NAMES = [str(path.relative_to(ROOT)) for path in MODULES]
 
 COMPUTING = {"compute", "load", "persist", "to_numpy"}
 LAZY = [
-    name for name in NAMES if name.split("/")[1] in ("dataset.py", "engine.py", "layers", "exports")
+    name
+    for name in NAMES
+    if name.split("/")[1] in ("dataset.py", "engine.py", "evaluation.py", "layers")
 ]
-"""Modules through which lazy arrays may pass; `pipeline` alone may compute."""
+"""Modules through which lazy arrays pass; `pipeline` alone may compute. `exports` sees none: it
+reads finished files and numbers."""
 
 OWN_VALUES = {"layer", "layers", "frame", "self", "table", "rocks", "one", "law", "responses",
-              "parameters", "by_rock", "parent", "features"}  # fmt: skip
+              "parameters", "by_rock", "parent", "features", "raw"}  # fmt: skip
 """Names whose ``values`` are fields of our own dataclasses or a mapping's, never an array's."""
 
 

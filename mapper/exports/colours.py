@@ -12,7 +12,7 @@ from types import MappingProxyType
 import numpy as np
 from numpy.typing import NDArray
 
-from mapper.engine import Flag
+from mapper.evaluation import Flag
 
 _SCALES = {"consumption": "lajolla", "drawdown": "bamako"}
 _OTHER_SCALE = "devon"

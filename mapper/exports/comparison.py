@@ -12,8 +12,8 @@ from types import MappingProxyType
 import numpy as np
 
 from mapper.accounting import drawdown_share, to_rate
-from mapper.engine import Flag, RockResult, evaluate_rock
 from mapper.errors import LawError, Problems, UnitError
+from mapper.evaluation import Flag, RockResult, evaluate_rock
 from mapper.exports.catalogue import find_named
 from mapper.laws import LAW_INPUTS, ZERO_CELSIUS, Law
 from mapper.layers.layer import QUANTITY

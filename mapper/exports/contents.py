@@ -13,8 +13,11 @@ from typing import Any
 import geopandas as gpd
 
 from mapper.engine import Plan
+from mapper.exports.alternatives import LawTotals
 from mapper.exports.files import safe_cell
 from mapper.exports.tables import Totals
+from mapper.ranking import Ranking
+from mapper.uncertainty.spread import SpreadFound
 
 OTHER_ROWS = ("outside", "all")
 """Rows of the regions table that are no region."""
@@ -58,6 +61,20 @@ class Table:
     def by_region(self) -> Mapping[str, dict[str, Any]]:
         """Rows by region, for tables with one row a region."""
         return {record["region"]: record for record in self.records()}
+
+
+@dataclass(frozen=True)
+class RunResult:
+    """What a run left: its folder, its totals, and what it found out about itself."""
+
+    folder: Path
+    totals: Totals
+    checks: Mapping[str, float]
+    seconds: float
+    resumed_blocks: int
+    spread: SpreadFound | None = None
+    ranking: Ranking | None = None
+    laws: tuple[LawTotals, ...] = ()
 
 
 @dataclass(frozen=True, eq=False)

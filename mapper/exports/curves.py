@@ -12,8 +12,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share, to_rate
-from mapper.engine import evaluate_rock
 from mapper.errors import FileFormatError, LawError
+from mapper.evaluation import evaluate_rock
 from mapper.exports.catalogue import find_named
 from mapper.exports.comparison import Conditions, spell_condition
 from mapper.exports.files import whole_file

@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 from rasterio.shutil import copy as copy_raster
 from rasterio.windows import Window as RasterWindow
 
-from mapper.engine import FLAG_MEANING
+from mapper.evaluation import FLAG_MEANING
 from mapper.exports.files import whole_file
 from mapper.grid import Grid, Window
 from mapper.uncertainty.cells import MAP_DRAWS

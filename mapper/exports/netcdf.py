@@ -10,7 +10,7 @@ import numpy as np
 import rasterio
 from rasterio.windows import Window as RasterWindow
 
-from mapper.engine import FLAG_MEANING, Flag
+from mapper.evaluation import FLAG_MEANING, Flag
 from mapper.exports.colours import flag_key
 from mapper.exports.contents import Contents
 from mapper.exports.files import whole_file

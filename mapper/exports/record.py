@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import hashlib
 import importlib.metadata
+import json
+import math
 import platform
 from collections.abc import Mapping
 from dataclasses import asdict
@@ -12,10 +14,14 @@ from typing import Any
 
 from mapper.accounting import DAYS_PER_YEAR, MOLAR_MASS
 from mapper.engine import Plan
+from mapper.exports.alternatives import describe_alternatives
 from mapper.exports.classes import describe_classes
-from mapper.grid import parse_crs
+from mapper.exports.contents import RunResult
+from mapper.exports.doubts import describe_spread
+from mapper.grid import Window, parse_crs
 from mapper.job import Job
 from mapper.layers.layer import QUANTITY, Layer
+from mapper.ranking import CLEARLY_AHEAD
 from mapper.scheme import RockLaw
 from mapper.units import INNER_UNIT
 
@@ -173,3 +179,83 @@ def versions() -> dict[str, str]:
 def constants() -> Mapping[str, Any]:
     """Constants that every number rests on."""
     return {"days_per_year": DAYS_PER_YEAR, "molar_mass_g_per_mol": dict(MOLAR_MASS)}
+
+
+def fingerprint(job: Job, windows: list[Window]) -> dict[str, Any]:
+    """What must be the same for finished blocks to be used again, key by key of the job."""
+    described = {key: one for key, one in describe_job(job).items() if key not in _NO_NUMBERS}
+    files = {
+        f"the file {Path(path).name} ({at})": [
+            Path(path).stat().st_size, Path(path).stat().st_mtime_ns
+        ]
+        for at, path in enumerate(input_files(job), start=1)
+    }  # fmt: skip
+    return {
+        **_flat(described),
+        **{f"version of {name}": one for name, one in versions().items()},
+        "blocks": [len(windows), *windows[0].shape],
+        **files,
+    }
+
+
+_NO_NUMBERS = ("title", "path", "folder")
+"""Keys of a job that change no number."""
+
+
+def _flat(described: Mapping[str, Any], before: str = "") -> dict[str, str]:
+    """Nested keys as one dotted key each."""
+    found: dict[str, str] = {}
+    for key, value in described.items():
+        name = f"{before}{key}"
+        if isinstance(value, Mapping) and value:
+            found |= _flat(value, f"{name}.")
+        else:
+            found[name] = json.dumps(value, default=str)
+    return found
+
+
+def describe_run(job: Job, plan: Plan, result: RunResult) -> dict[str, Any]:
+    """The record of a run but for what is known only at its end."""
+    found = result.totals
+    return {
+        "title": job.title,
+        "cautions": list(CAUTIONS),
+        "result": {
+            "consumption_t_per_yr": float(found.consumption.sum()),
+            "drawdown_t_per_yr": float(found.drawdown.sum()),
+            "valid_area_km2": float(found.valid_area.sum()),
+            "area_under_flag_km2": found.flagged,
+            "between_laws": describe_alternatives(result.laws),
+        },
+        "checks": dict(result.checks),
+        **_describe_doubts(job, result),
+        "job": describe_job(job),
+        **describe_plan(plan),
+        "inputs": describe_inputs(job),
+        "versions": versions(),
+        "constants": constants(),
+    }
+
+
+def _describe_doubts(job: Job, result: RunResult) -> dict[str, Any]:
+    """What the record says of draws and ranking, where the job asks for them."""
+    described: dict[str, Any] = {}
+    if job.uncertainty is not None and result.spread is not None:
+        described["uncertainty"] = describe_spread(job.uncertainty, result.spread)
+    if result.ranking is not None:
+        described["ranking"] = {
+            "left_out": dict(result.ranking.left_out),
+            "told_apart_from": CLEARLY_AHEAD,
+        }
+    return described
+
+
+def plain(value: Any) -> Any:
+    """Turn what JSON does not know into what it does."""
+    if isinstance(value, Mapping):
+        return {str(key): plain(one) for key, one in value.items()}
+    if isinstance(value, list | tuple):
+        return [plain(one) for one in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value

@@ -9,7 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import SQUARE_METRES_PER_KM2, to_rate, tonnes_per_mole
-from mapper.engine import COUNTED_FLAGS, FLAG_MEANING, KEPT, OUTSIDE_RANGE, BlockSums, Flag
+from mapper.engine import KEPT, BlockSums
+from mapper.evaluation import COUNTED_FLAGS, FLAG_MEANING, OUTSIDE_RANGE, Flag
 from mapper.rocks import ROCK_NAMES
 from mapper.sums import Counts, totals
 from mapper.uncertainty.intervals import LEVEL_NAMES, LEVELS, Intervals

@@ -96,8 +96,8 @@ class Lithology:
     ) -> list[list[tuple[int, float]]]:
         known = [self.legend.mixtures.get(normal_code(name)) for name in names]
         if self.spec.unknown == "error":
-            found = np.unique(codes)
-            missing = {names[at] for at in found if known[at] is None}
+            found = np.bincount(codes, minlength=len(names))
+            missing = {names[at] for at in np.flatnonzero(found) if known[at] is None}
             if missing:
                 seen = {one: two for one, two in self.codes_in(window).items() if one in missing}
                 raise unknown_codes(seen, self.spec, self.legend, window)

@@ -15,8 +15,9 @@ from scipy.special import ndtri
 from mapper.accounting import drawdown_share
 from mapper.doubts import KEPT_SHARE, LAYER_SPREADS, UncertaintySpec
 from mapper.errors import JobError, LawError, MapperError, Problems
-from mapper.job import Job, ParameterSpec
+from mapper.job import Job
 from mapper.laws import LAW_INPUTS, Grade, Parameter, Spread
+from mapper.lawspec import ParameterSpec
 from mapper.rocks import ROCKS, Rock
 from mapper.scheme import Scheme
 

@@ -13,7 +13,7 @@ import pytest
 import rasterio
 from PIL import Image
 
-from mapper.engine import Flag
+from mapper.evaluation import Flag
 from mapper.exports.colours import flag_colour, flag_values, stretch
 from mapper.exports.contents import read_table
 

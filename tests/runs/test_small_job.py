@@ -18,6 +18,7 @@ from rio_cogeo.cogeo import cog_validate
 import mapper
 import mapper.errors
 from mapper.cli import main
+from mapper.pipeline import Engine
 from tests.making import (
     ROOT,
     command,
@@ -159,7 +160,7 @@ def test_the_same_job_twice_and_on_one_or_two_threads_gives_the_same_bytes(ran, 
     first = contents(out)
     job = mapper.load_job(out.parent / "job.toml")
     for threads in (1, 2):
-        mapper.run(job, out=tmp_path / str(threads), threads=threads)
+        mapper.run(job, out=tmp_path / str(threads), engine=Engine(threads=threads))
         assert contents(tmp_path / str(threads)) == first
 
 
@@ -182,7 +183,7 @@ def test_every_problem_of_a_job_is_listed_at_once(tmp_path):
             "unit 'furlong' is not one that water may have",
             "there is no file 'nowhere.tif'",
             "the file does not say its CRS",
-            "the legend has no line for code 3 (4 cells)",
+            "the legend has no line for code 3 (4 cells, ",
             "no region touches the grid",
         ):
             assert problem in done.stderr, problem
@@ -271,13 +272,14 @@ def test_a_job_without_regions_is_one_outside(tmp_path):
 
 SLOW = """
 import sys, time
-from mapper import cli, pipeline, planning
-planning.block_shape = pipeline.block_shape = lambda plan: (1, 1)
-whole = pipeline.evaluate_block
-def slowly(plan, window):
+from mapper import cli, pipeline
+from mapper.journal import Journal
+pipeline.block_shape = lambda *_: (1, 1)
+whole = Journal.save
+def slowly(journal, index, arrays):
     time.sleep(PAUSE)
-    return whole(plan, window)
-pipeline.evaluate_block = slowly
+    whole(journal, index, arrays)
+Journal.save = slowly
 sys.exit(cli.main(sys.argv[1:]))
 """
 

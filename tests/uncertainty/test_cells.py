@@ -9,8 +9,9 @@ from worlds import ISLAND
 from mapper.doubts import UncertaintySpec
 from mapper.engine import evaluate_block
 from mapper.grid import Window
-from mapper.job import LawSpec, ParameterSpec, load_job
+from mapper.job import load_job
 from mapper.laws import Spread
+from mapper.lawspec import LawSpec, ParameterSpec
 from mapper.pipeline import run
 from mapper.planning import make_plan
 from mapper.uncertainty.cells import cell_intervals, first_draws

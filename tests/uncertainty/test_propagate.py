@@ -7,8 +7,8 @@ from worlds import NO_KEPT_SPREAD, central_totals, draw, job, linear_scheme, wet
 
 from mapper.doubts import UncertaintySpec
 from mapper.engine import KEPT
-from mapper.job import ParameterSpec
 from mapper.laws import Spread
+from mapper.lawspec import ParameterSpec
 from mapper.rocks import ROCK_NAMES
 from mapper.uncertainty.intervals import find_intervals
 

@@ -10,8 +10,9 @@ import numpy as np
 from mapper.accounting import tonnes_per_mole
 from mapper.doubts import UncertaintySpec
 from mapper.engine import KEPT
-from mapper.job import Job, LawSpec, ParameterSpec, load_job
+from mapper.job import Job, load_job
 from mapper.laws import LAWS, Spread
+from mapper.lawspec import LawSpec, ParameterSpec
 from mapper.rocks import ROCK_NAMES
 from mapper.scheme import RockLaw, Scheme
 from mapper.states import States

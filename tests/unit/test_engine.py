@@ -4,7 +4,8 @@ import numpy as np
 import pytest
 
 import mapper
-from mapper.engine import FLAG_MEANING, Flag, RockResult, evaluate_block, evaluate_rock
+from mapper.engine import evaluate_block
+from mapper.evaluation import FLAG_MEANING, Flag, RockResult, evaluate_rock
 from mapper.laws import LAWS
 from mapper.planning import make_plan
 from mapper.scheme import RockLaw

@@ -7,7 +7,7 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
-from mapper.engine import Flag, evaluate_rock
+from mapper.evaluation import Flag, evaluate_rock
 from mapper.laws import LAWS, cap_law, supply_limit
 from mapper.scheme import RockLaw
 

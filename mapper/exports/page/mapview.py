@@ -11,7 +11,7 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
-from mapper.engine import Flag
+from mapper.evaluation import Flag
 from mapper.exports.colours import (
     CLEAR_COLOUR,
     FLAG_COLOUR,

@@ -6,7 +6,7 @@ import math
 from collections.abc import Mapping
 from typing import Any
 
-from mapper.engine import FLAG_MEANING, Flag
+from mapper.evaluation import FLAG_MEANING, Flag
 from mapper.exports.colours import ROCK_COLOUR, flag_key
 from mapper.exports.contents import OTHER_ROWS, Contents
 from mapper.exports.page.markup import (
