@@ -19,7 +19,7 @@ from mapper.job import LayerSpec
 from mapper.layers.codes import CodeGrid, open_codes, whole_codes
 from mapper.layers.layer import open_source
 from mapper.legend import normal_code
-from mapper.sums import LIMBS, Counts, add_up, unit_exponent
+from mapper.sums import LIMBS, Counts, add_up, runs_of, unit_exponent
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -89,7 +89,8 @@ class ClassLayer:
         ------
         LegendError where a code is not in the legend and the job does not say what to do.
         """
-        cell, at, share = self.codes.shares(window, self._encode)
+        quick = self.codes.nested(window, self._encode)
+        cell, at, share = self.codes.shares(window, self._encode) if quick is None else quick
         known = at < len(self.names)
         cell, at, share = cell[known], at[known], share[known]
         covered = np.bincount(cell, weights=share, minlength=window.n_cells)
@@ -242,9 +243,7 @@ def sum_classes(
     found = [np.zeros((len(SUMMED), 0, LIMBS), dtype=np.int64)]
     for layer in layers:
         parts = layer.parts(window)
-        order = np.argsort(parts.at, kind="stable")
-        cell, at, share = (one[order] for one in parts)
-        found.append(
-            np.stack([add_up(at, row[cell] * share, layer.n_keys, exponent) for row in cells])
-        )
+        runs = runs_of(parts.at)
+        rows = (row[parts.cell] * parts.share for row in cells)
+        found.append(np.stack([add_up(runs, row, layer.n_keys, exponent) for row in rows]))
     return np.concatenate(found, axis=1)

@@ -11,8 +11,9 @@ from numpy.typing import NDArray
 
 from mapper.errors import ValuesError
 from mapper.grid import Grid, Window
+from mapper.layers.axis import AxisPlan
 from mapper.layers.layer import How, axis_plans, how_aligned, place, same_cells
-from mapper.layers.resample import class_shares
+from mapper.layers.resample import LEAST_SHARE, class_shares
 from mapper.layers.source import MOST_EXACT, Source
 from mapper.layers.warp import plan_points, subdivisions
 
@@ -59,6 +60,25 @@ class CodeGrid:
         cells = np.flatnonzero(valid)
         return CodeShares(cells, codes.ravel()[cells], np.ones(cells.size))
 
+    def nested(self, window: Window, encode: Encode) -> CodeShares | None:
+        """The codes where each cell lies in one cell of the file at most; None where it does not.
+
+        Far quicker than `shares`, and the same but for slivers that `shares` leaves out.
+        """
+        if self.how in ("same", "points"):
+            return self.shares(window, encode)
+        rows, cols = axis_plans(self.source, self.grid, window, "mean")
+        row, col = _only_source(rows), _only_source(cols)
+        if row is None or col is None:
+            return None
+        raw, valid = self.source.read(rows, cols)
+        codes: Ints = np.zeros(raw.shape, dtype=np.int64)
+        codes[valid] = encode(raw[valid])
+        at = np.ix_(row.at, col.at)
+        share = np.where(valid[at], np.outer(row.share, col.share), 0.0).ravel()
+        cells = np.flatnonzero(share > LEAST_SHARE)
+        return CodeShares(cells, codes[at].ravel()[cells], share[cells])
+
     def _from_points(self, window: Window, encode: Encode) -> CodeShares:
         none = np.empty(0, dtype=np.int64)
         plan = plan_points(self.grid, window, self.source, self.points)
@@ -72,6 +92,25 @@ class CodeGrid:
         pairs = np.stack([encode(raw[row, col][good]), cells], axis=1)
         unique, count = np.unique(pairs, axis=0, return_counts=True)
         return CodeShares(unique[:, 1], unique[:, 0], count / self.points**2)
+
+
+class _Only(NamedTuple):
+    """The one source cell that each target cell lies in, and the part of it that lies there."""
+
+    at: Ints
+    share: Floats
+
+
+def _only_source(plan: AxisPlan) -> _Only | None:
+    """None where a target cell reaches into a second source cell by more than a sliver."""
+    weights = plan.weights.tocoo()
+    real = weights.data > LEAST_SHARE
+    target, source = weights.row[real], weights.col[real]
+    if np.bincount(target, minlength=plan.nearest.size).max(initial=0) > 1:
+        return None
+    only = _Only(np.zeros(plan.nearest.size, np.int64), np.zeros(plan.nearest.size))
+    only.at[target], only.share[target] = source, weights.data[real]
+    return only
 
 
 def open_codes(source: Source, grid: Grid, *, where: str) -> CodeGrid:

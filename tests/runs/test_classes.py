@@ -152,3 +152,20 @@ def test_a_wrong_legend_is_refused(tmp_path, legend, said):
 )
 def test_wrong_classes_are_refused(tmp_path, classes, said):
     assert said in refused(small_job(tmp_path, classes=classes))
+
+
+def test_the_quick_way_for_coarse_files_gives_the_shares_of_the_exact_one(island):
+    window = Window(100, 37, 301, 203)
+    for layer in island.classes:
+        quick = layer.codes.nested(window, layer._encode)
+        exact = layer.codes.shares(window, layer._encode)
+        order = np.lexsort((exact.cell,))
+        assert (exact.cell[order] == quick.cell).all()
+        assert (exact.code[order] == quick.code).all()
+        assert exact.share[order] == pytest.approx(quick.share, abs=1e-6)
+
+
+def test_the_quick_way_is_not_taken_where_a_cell_holds_several_of_the_file(tmp_path):
+    plan = make_plan(load_job(land(tmp_path, np.ones((8, 8)), cell=500.0)))
+    layer = plan.classes[0]
+    assert layer.codes.nested(Window(0, 0, 4, 4), layer._encode) is None
