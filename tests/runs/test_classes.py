@@ -10,6 +10,7 @@ from mapper.classes import band_names
 from mapper.engine import evaluate_block
 from mapper.errors import MapperError
 from mapper.grid import Window, blocks
+from mapper.inspection import inspect
 from mapper.job import load_job
 from mapper.planning import make_plan
 from tests.making import ROOT, small_job, write_raster
@@ -169,3 +170,8 @@ def test_the_quick_way_is_not_taken_where_a_cell_holds_several_of_the_file(tmp_p
     plan = make_plan(load_job(land(tmp_path, np.ones((8, 8)), cell=500.0)))
     layer = plan.classes[0]
     assert layer.codes.nested(Window(0, 0, 4, 4), layer._encode) is None
+
+
+def test_inspecting_a_job_names_its_classes(tmp_path):
+    lines = inspect(load_job(land(tmp_path, np.ones((4, 4))))).lines()
+    assert "classes     land: 2 classes of land.tif" in lines
