@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.accounting import drawdown_share
+from mapper.classes import SUMMED, ClassLayer, cell_amounts, sum_classes
 from mapper.coverage import MIXED
 from mapper.evaluation import (
     COUNTED_FLAGS,
@@ -56,6 +57,7 @@ class Plan:
     water: WaterSpec = field(default_factory=WaterSpec)
     month_shares: tuple[float, ...] = ()
     """Parts of a year that the twelve months take, where the rates of months are averaged."""
+    classes: tuple[ClassLayer, ...] = ()
 
     def parts_of_year(self) -> list[tuple[int | None, float]]:
         """Months and their parts of the year where rates are averaged, else the year whole."""
@@ -76,7 +78,8 @@ class BlockSums(NamedTuple):
     drawdown [mol yr-1]. The others are by region and rock, shape (n_regions, n_rocks, LIMBS):
     rock area, area with a result, consumption, and the area under each of `COUNTED_FLAGS`.
     ``laws`` holds for each alternative law consumption, area with a result, and area outside its
-    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS). ``water`` is that of `water_sums`.
+    range, shape (n_alternatives, 3, n_regions, n_rocks, LIMBS). ``water`` is that of `water_sums`,
+    ``classes`` that of `sum_classes`.
     """
 
     area: Counts
@@ -87,6 +90,7 @@ class BlockSums(NamedTuple):
     flagged: Counts
     laws: Counts
     water: Counts
+    classes: Counts
 
     def plus(self, other: BlockSums) -> BlockSums:
         """Both sums together."""
@@ -152,6 +156,10 @@ def evaluate_block_states(
     if others:
         laws = [_sum_alternative(plan, one, ground) for one in others]
         sums = sums._replace(laws=np.stack(laws))
+    if plan.classes:
+        good = ~np.isnan(result.rate)[ground.entry]
+        cells = cell_amounts(areas, (ground.cell[good], ground.area[good]), maps[:2])
+        sums = sums._replace(classes=sum_classes(plan.classes, plan.grid, window, cells))
     if layout is None:
         return maps, sums, None
     counts = [
@@ -376,6 +384,7 @@ def _sum_block(
         flagged=np.stack(flagged).reshape(len(flagged), *shape),
         laws=np.zeros((0, 3, *shape), dtype=np.int64),
         water=NO_BALANCE,
+        classes=np.zeros((len(SUMMED), 0, LIMBS), dtype=np.int64),
     )
 
 

@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
+from mapper.classes import ClassLayer
 from mapper.engine import Plan
 from mapper.gaps import Gaps, find_gaps
 from mapper.grid import blocks, parse_crs
@@ -50,6 +51,7 @@ class Inspection:
         lines += [_water_line(self.plan)] if "runoff" not in self.plan.layers else []
         lines += self.gaps.lines()
         lines += [_region_line(self.plan)]
+        lines += [_classes_line(one) for one in self.plan.classes]
         lines += [
             f"law         {rock}: {one.law.name}"
             + (f"; {'; '.join(one.changed)}" if one.changed else "")
@@ -117,6 +119,12 @@ def _lithology_line(plan: Plan) -> str:
 
 def _water_line(plan: Plan) -> str:
     return f"runoff      derived from precipitation and temperature by {plan.water_method}"
+
+
+def _classes_line(layer: ClassLayer) -> str:
+    name = Path(layer.spec.path).name
+    kind = "bands" if layer.spec.bands else "classes"
+    return f"classes     {layer.spec.name}: {len(layer.names)} {kind} of {name}"
 
 
 def _region_line(plan: Plan) -> str:

@@ -6,10 +6,11 @@ import math
 import os
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from mapper.classing import ClassesSpec, classes_specs
 from mapper.doubts import (
     RankingSpec,
     UncertaintySpec,
@@ -150,6 +151,7 @@ class Job:
     ranking: RankingSpec | None = None
     write: tuple[str, ...] = WRITTEN
     time_mean: str = "climate"
+    classes: Mapping[str, ClassesSpec] = field(default_factory=dict)
 
     @property
     def water_method(self) -> str:
@@ -201,6 +203,9 @@ def read_job(path: str | Path) -> tuple[Job | None, Problems]:
         water=_water_spec(root.table("water")),
         time_mean=root.table("time").choice("mean", TIME_MEANS, default="climate"),
         law=law_spec(root.table("law")),
+        classes=classes_specs(
+            root.table("classes"), lambda text, table: _absolute(text, folder, table)
+        ),
         regions=_regions_spec(root.table("regions"), folder) if "regions" in table else None,
         uncertainty=uncertainty_spec(root.table("uncertainty")) if "uncertainty" in table else None,
         ranking=ranking_spec(root.table("ranking")) if "ranking" in table else None,
@@ -209,6 +214,7 @@ def read_job(path: str | Path) -> tuple[Job | None, Problems]:
     root.known.extend(["regions", "uncertainty", "ranking"])
     root.finish()
     paths = [one.path for one in job.layers.values()]
+    paths += [one.path for one in job.classes.values()]
     paths += [job.regions.path, job.regions.id] if job.regions is not None else []
     lithology = job.layers.get("lithology")
     enough = all(paths) and lithology is not None and bool(lithology.legend)

@@ -27,6 +27,7 @@ from mapper.exports.alternatives import (
     spread_rows,
     to_law_totals,
 )
+from mapper.exports.classes import write_classes
 from mapper.exports.contents import Contents, RunResult
 from mapper.exports.doubts import (
     rank_totals,
@@ -137,6 +138,7 @@ def run(
         ranking = None if job.ranking is None else rank_totals(job.ranking, found, spread)
         laws = to_law_totals(sums, found, plan.scheme, unit_exponent(plan.grid))
         _write_tables(found, spread, ranking, folder)
+        checks |= write_classes(plan, sums, found, folder)
         _write_laws(laws, found.names, folder)
         spots = _write_hotspots(job, folder)
         seconds = time.monotonic() - began

@@ -9,19 +9,20 @@ from pathlib import Path
 import numpy as np
 from numpy.typing import NDArray
 
+from mapper.classes import ClassLayer, open_classes
 from mapper.coverage import polygons_on
 from mapper.engine import Plan, evaluate_block
 from mapper.errors import JobError, MapperError, Problems
 from mapper.grid import Grid, Window, blocks, cell_areas, same_crs
 from mapper.gridding import choose_grid
 from mapper.job import Job, LayerSpec, read_job
+from mapper.layers.codes import open_codes
 from mapper.layers.lapse import with_lapse
-from mapper.layers.layer import How, Layer, how_aligned, open_layer, open_source, place, source_grid
+from mapper.layers.layer import Layer, open_layer, open_source, source_grid
 from mapper.layers.lithology import Lithology, nothing_mapped, unknown_codes
 from mapper.layers.oddities import odd_values
 from mapper.layers.source import Source, file_kind
 from mapper.layers.vector import read_vector, reproject, valid_shapes
-from mapper.layers.warp import subdivisions
 from mapper.layers.water import (
     check_months,
     has_potential,
@@ -115,6 +116,7 @@ def make_plan(job: Job) -> Plan:
     if job.regions is not None:
         with problems.gather():
             regions = open_regions(job.regions, grid)
+    classes = _open_classes(job, grid, problems)
     notes: list[str] = []
     shares: tuple[float, ...] = ()
     with problems.gather():
@@ -133,8 +135,21 @@ def make_plan(job: Job) -> Plan:
         regions,
         water=job.water,
         month_shares=shares,
+        classes=classes,
     )
     return replace(plan, notes=(*notes, *_compare_means(plan)))
+
+
+def _open_classes(job: Job, grid: Grid, problems: Problems) -> tuple[ClassLayer, ...]:
+    """Open the classes of a job and look at some of their codes."""
+    found: list[ClassLayer] = []
+    for spec in job.classes.values():
+        with problems.gather():
+            layer = open_classes(spec, grid)
+            for window in sample_windows(grid):
+                layer.parts(window)
+            found.append(layer)
+    return tuple(found)
 
 
 def _compare_means(plan: Plan) -> list[str]:
@@ -256,12 +271,8 @@ def _lithology(
             if not _polygons_or_wrong(spec):
                 return None
             return _from_polygons(spec, legend, grid)
-        source = place(sources["lithology"], grid, where=spec.where)
-        if not source.is_integer and np.dtype(source.dtype).kind != "f":  # pragma: no cover
-            raise AssertionError
-        how: How = how_aligned(source, grid, "mean")
-        points = subdivisions(grid, source) if how == "points" else 1
-        return Lithology(spec, legend, grid, how, source, max(points, 2) if how == "points" else 1)
+        codes = open_codes(sources["lithology"], grid, where=spec.where)
+        return Lithology(spec, legend, grid, codes.how, codes.source, codes.points)
     return None
 
 

@@ -160,7 +160,7 @@ def read_table(path: Path, spelled: Mapping[str, str] | None = None) -> Table:
 
 
 def _is_text(name: str, at: int, rows: list[list[str]]) -> bool:
-    if name in ("region", "rock"):
+    if name in ("region", "rock", "class"):
         return True
     return any(row[at] and math.isnan(_number(row[at])) for row in rows)
 

@@ -28,6 +28,7 @@ from mapper.exports.display import (
     tick_label,
     ticks,
 )
+from mapper.exports.drivers import write_drivers
 from mapper.exports.files import whole_file
 from mapper.exports.words import clean, pretty_unit, shorten
 
@@ -46,7 +47,8 @@ def heading(shown: DisplayMap) -> str:
 
 
 def write_pictures(contents: Contents, display: Display) -> None:
-    """Write ``maps/NAME.png`` and ``maps/NAME_legend.png`` for every map."""
+    """Write ``maps/NAME.png``, ``maps/NAME_legend.png``, and ``tables/sensitivity.png``."""
+    write_drivers(contents)
     shapes = outlines(contents)
     folder = contents.folder / "maps"
     with warnings.catch_warnings():

@@ -15,6 +15,7 @@ from typing import Any
 from mapper.accounting import DAYS_PER_YEAR, MOLAR_MASS
 from mapper.engine import Plan
 from mapper.exports.alternatives import describe_alternatives
+from mapper.exports.classes import describe_classes
 from mapper.exports.contents import RunResult
 from mapper.exports.doubts import describe_spread
 from mapper.grid import Window, parse_crs
@@ -60,6 +61,7 @@ def input_files(job: Job) -> list[str]:
         for path in (*(spec.paths or (spec.path,)), spec.legend, spec.table)
         if path
     ]
+    paths += [path for spec in job.classes.values() for path in (spec.path, spec.legend) if path]
     if job.regions is not None:
         paths.append(job.regions.path)
     return list(dict.fromkeys(paths))
@@ -86,6 +88,9 @@ def describe_job(job: Job) -> dict[str, Any]:
         for key in ("path", "legend", "table"):
             spec[key] = Path(spec[key]).name if spec[key] else None
         spec["paths"] = [Path(one).name for one in spec["paths"]]
+    for spec in described["classes"].values():
+        for key in ("path", "legend"):
+            spec[key] = Path(spec[key]).name if spec[key] else None
     if described["regions"]:
         described["regions"]["path"] = Path(described["regions"]["path"]).name
     return described
@@ -121,6 +126,7 @@ def describe_plan(plan: Plan) -> dict[str, Any]:
             }
             for other in plan.scheme.alternatives
         ],
+        "classes": {one.spec.name: describe_classes(one) for one in plan.classes},
         "regions": None
         if plan.regions is None
         else {"count": len(plan.regions.names), "notes": list(plan.regions.notes)},

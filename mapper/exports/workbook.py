@@ -20,6 +20,7 @@ _FIXED_DATE = dt.datetime(2000, 1, 1, tzinfo=dt.UTC).replace(tzinfo=None)
 COLUMN_MEANING: Mapping[str, tuple[str, str]] = {
     "region": ("", "id of the region; 'outside' lies in none, 'all' is the whole grid"),
     "rock": ("", "rock class; 'unmapped' has no rock, 'all' is the sum"),
+    "class": ("", "class of a further layer; 'no class' has none, 'all' is the whole grid"),
     "area_km2": ("km2", "area on the ellipsoid"),
     "valid_area_km2": ("km2", "area with a result; rates are per km2 of this area"),
     "consumption_t_per_yr": ("t CO2 yr-1", "CO2 taken up by weathering, short term"),

@@ -4,19 +4,19 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Any, NamedTuple
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from mapper.coverage import OVERLAP_TOLERANCE, Polygons, cover_window
-from mapper.errors import LegendError, RegionError, ValuesError
+from mapper.errors import LegendError, RegionError
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import LayerSpec
-from mapper.layers.layer import How, axis_plans, same_cells
-from mapper.layers.resample import LEAST_SHARE, class_shares
-from mapper.layers.source import MOST_EXACT, Source
-from mapper.layers.warp import plan_points
+from mapper.layers.codes import CodeGrid, whole_codes
+from mapper.layers.layer import How
+from mapper.layers.resample import LEAST_SHARE
+from mapper.layers.source import Source
 from mapper.legend import Legend, normal_code, suggest_rock
 from mapper.rocks import ROCK_NAMES
 
@@ -84,42 +84,12 @@ class Lithology:
             return *_settled(entries, window), self.polygons.names
         if self.source is None:  # pragma: no cover - one of the two is always there
             raise AssertionError
-        cells, codes, shares = self._from_raster(self.source, window)
+        placed = CodeGrid(self.source, self.grid, self.how, self.points)
+        cells, codes, shares = placed.shares(
+            window, lambda raw: whole_codes(raw, where=self.spec.where)
+        )
         values, index = _distinct(codes)
         return cells, index, shares, tuple(str(int(one)) for one in values)
-
-    def _from_raster(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
-        if self.how == "points":
-            return self._from_points(source, window)
-        same = self.how == "same"
-        rows, cols = axis_plans(source, self.grid, window, "nearest" if same else "mean")
-        raw, valid = source.read(rows, cols)
-        _refuse_fractions(raw, valid, self.spec)
-        if not same:
-            return class_shares(rows, cols, np.where(valid, raw, 0).astype(np.int64), valid)
-        if raw.shape != window.shape:
-            at, taken = zip(same_cells(rows), same_cells(cols), strict=True)
-            whole, held = np.zeros(window.shape, raw.dtype), np.zeros(window.shape, np.bool_)
-            whole[at], held[at] = raw[taken], valid[taken]
-            raw, valid = whole, held
-        cells = np.flatnonzero(valid)
-        return cells, raw.ravel()[cells].astype(np.int64), np.ones(cells.size)
-
-    def _from_points(self, source: Source, window: Window) -> tuple[Ints, Ints, Floats]:
-        none = np.empty(0, dtype=np.int64)
-        plan = plan_points(self.grid, window, source, self.points)
-        if plan is None:
-            return none, none.copy(), np.empty(0)
-        raw, valid = source.read(plan.rows, plan.cols)
-        _refuse_fractions(raw, valid, self.spec)
-        row, col = np.maximum(plan.row, 0), np.maximum(plan.col, 0)
-        good = (plan.row >= 0) & valid[row, col]
-        at_row, at_col = np.nonzero(good)
-        cells = at_row // self.points * window.n_cols + at_col // self.points
-        codes = raw[row, col][good].astype(np.int64)
-        pairs = np.stack([codes, cells], axis=1)
-        unique, count = np.unique(pairs, axis=0, return_counts=True)
-        return unique[:, 1], unique[:, 0], count / self.points**2
 
     def _mixtures(
         self, names: tuple[str, ...], codes: Ints, window: Window
@@ -162,18 +132,6 @@ def _settled(entries: tuple[Ints, Ints, Floats], window: Window) -> tuple[Ints, 
     covered = np.bincount(cells, weights=shares, minlength=window.n_cells)
     whole = np.abs(covered - 1.0) <= OVERLAP_TOLERANCE
     return cells, codes, shares / np.where(whole, covered, 1.0)[cells]
-
-
-def _refuse_fractions(raw: NDArray[Any], valid: NDArray[np.bool_], spec: LayerSpec) -> None:
-    if raw.dtype.kind != "f":
-        return
-    wrong = valid & ((raw != np.floor(raw)) | (np.abs(raw) > MOST_EXACT))
-    if wrong.any():
-        raise ValuesError(
-            f"{int(wrong.sum())} codes are not whole numbers, for example {raw[wrong][0]:g}",
-            where=spec.where,
-            fix="a raster of integer codes, never resampled by bilinear or mean",
-        )
 
 
 def _distinct(codes: Ints) -> tuple[Ints, Ints]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,6 +21,11 @@ about 0.15 standard deviations of that of many (sqrt(p (1 - p) / n) over the nor
 
 MAP_LEVELS = (0.05, 0.95)
 CELLS_AT_ONCE = 4096
+CELLS_OF_MONTHS = 2**17
+"""Cells whose twelve months are held at once, where the rates of months are averaged."""
+
+Part = tuple[float, Mapping[str, Floats]]
+"""A part of the year, and the layers that hold in it."""
 
 
 def first_draws(samples: Samples, n: int) -> Samples:
@@ -46,10 +51,19 @@ def cell_intervals(plan: Plan, window: Window, samples: Samples) -> Floats:
     ----------
     samples : from `first_draws`.
     """
+    n_rows = window.n_rows
+    if plan.month_shares:
+        n_rows = max(1, CELLS_OF_MONTHS // window.n_cols)
+    bands = [
+        Window(row, window.col, min(n_rows, window.row_stop - row), window.n_cols)
+        for row in range(window.row, window.row_stop, n_rows)
+    ]
+    return np.concatenate([_band_intervals(plan, one, samples) for one in bands], axis=1)
+
+
+def _band_intervals(plan: Plan, window: Window, samples: Samples) -> Floats:
     rocks = plan.lithology.rock_cells(window)
-    inputs = read_inputs(plan, window)
-    if "runoff" in inputs:
-        inputs["runoff"] = np.maximum(inputs["runoff"], 0.0)
+    year = [(share, _read(plan, window, month)) for month, share in plan.parts_of_year()]
     order = np.argsort(rocks.cell, kind="stable")
     rocks = RockCells(rocks.cell[order], rocks.rock[order], rocks.share[order])
     out = np.full((len(MAP_LEVELS), window.n_cells), np.nan)
@@ -58,18 +72,29 @@ def cell_intervals(plan: Plan, window: Window, samples: Samples) -> Floats:
         first, last = np.searchsorted(rocks.cell, (start, stop))
         part = slice(int(first), int(last))
         entries = RockCells(rocks.cell[part] - start, rocks.rock[part], rocks.share[part])
-        here = {name: values[start:stop] for name, values in inputs.items()}
+        here = [
+            (share, {name: values[start:stop] for name, values in inputs.items()})
+            for share, inputs in year
+        ]
         drawn, known = _draw_cells(plan, entries, here, samples)
         found = np.quantile(drawn[:, known], MAP_LEVELS, axis=0)
         out[:, start:stop][:, known] = found
     return out.reshape(len(MAP_LEVELS), *window.shape)
 
 
+def _read(plan: Plan, window: Window, month: int | None) -> dict[str, Floats]:
+    """The layers of a window as the laws take them: no runoff below zero."""
+    inputs = read_inputs(plan, window, month)
+    if "runoff" in inputs:
+        inputs["runoff"] = np.maximum(inputs["runoff"], 0.0)
+    return inputs
+
+
 def _draw_cells(
-    plan: Plan, rocks: RockCells, inputs: Mapping[str, Floats], samples: Samples
+    plan: Plan, rocks: RockCells, year: Sequence[Part], samples: Samples
 ) -> tuple[Floats, NDArray[np.bool_]]:
     """Drawdown of every draw and cell, (n_draws, n_cells), and which cells have a result."""
-    n_cells = next(iter(inputs.values())).size
+    n_cells = next(iter(year[0][1].values())).size
     drawn = np.zeros((samples.n_draws, n_cells))
     known = np.zeros(n_cells, dtype=np.bool_)
     for rock in np.unique(rocks.rock):
@@ -80,14 +105,16 @@ def _draw_cells(
         if law is None:
             known[cell] = True
             continue
-        read = [
-            shifted(one, inputs[one][cell][None], samples.layers.get(one))
-            for one in law.law.input_names
-        ]
         values = {**law.values, **samples.parameters.get(name, {})}
-        with np.errstate(all="ignore"):  # what is not finite has no result
-            rate = law.law.function(*read, **values) * (share * KEPT[int(rock)])
-        rate = rate * samples.kept.get(name, 1.0)
+        rate: Floats = np.zeros((1, cell.size))
+        for part, inputs in year:
+            read = [
+                shifted(one, inputs[one][cell][None], samples.layers.get(one))
+                for one in law.law.input_names
+            ]
+            with np.errstate(all="ignore"):  # what is not finite has no result
+                rate = rate + part * law.law.function(*read, **values)
+        rate = rate * (share * KEPT[int(rock)]) * samples.kept.get(name, 1.0)
         good = np.isfinite(rate).all(axis=0)
         drawn[:, cell[good]] += np.broadcast_to(rate, (samples.n_draws, cell.size))[:, good]
         known[cell[good]] = True

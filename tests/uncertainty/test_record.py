@@ -81,3 +81,8 @@ def test_a_grid_without_a_result_has_totals_of_zero_without_spread(tmp_path):
     )
     table = pd.read_csv(tmp_path / "tables/regions.csv")
     assert table.drawdown_t_per_yr_p95.tolist() == [0.0, 0.0]
+
+
+def test_the_picture_of_what_drives_the_spread_is_listed(folder):
+    listed = {one["name"] for one in json.loads((folder / "run.json").read_text())["files"]}
+    assert "tables/sensitivity.png" in listed
