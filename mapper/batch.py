@@ -9,9 +9,9 @@ from pathlib import Path
 
 from mapper.errors import JobError, Problems
 from mapper.exports.combined import write_combined
+from mapper.exports.contents import RunResult
 from mapper.exports.files import safe_cell
 from mapper.job import Job
-from mapper.pipeline import RunResult
 from mapper.planning import make_plan, open_job
 
 COMBINED = "combined.csv"

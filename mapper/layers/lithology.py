@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from mapper.coverage import OVERLAP_TOLERANCE, Polygons, cover_window
-from mapper.errors import LegendError, RegionError
+from mapper.errors import LegendError, RegionError, ValuesError
 from mapper.grid import Grid, Window, cell_areas
 from mapper.job import LayerSpec
 from mapper.layers.codes import CodeGrid, whole_codes

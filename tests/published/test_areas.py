@@ -60,7 +60,7 @@ def test_a_projected_cell_has_the_area_of_its_geodesic_polygon(crs, left, top):
     outline = Transformer.from_crs(crs, LON_LAT, always_xy=True)
     ring = shapely.segmentize(shapely.box(0, -1000, 1000, 0), 50.0).exterior.coords
     for row, col in ((0, 0), (13, 7), (29, 29)):
-        x, y = ([*np.array(ring), left + 1000 * col, top - 1000 * row]).T
+        x, y = (np.array(ring) + np.array([left + 1000 * col, top - 1000 * row])).T
         assert areas[row, col] == pytest.approx(geodesic_area(*outline.transform(x, y)), rel=2e-6)
 
 
