@@ -95,7 +95,8 @@ def _held(rows: AxisPlan, cols: AxisPlan, valid: Bools) -> Bools:
     inside = (rows.nearest >= 0)[:, None] & (cols.nearest >= 0)[None, :]
     if valid.all():
         return inside
-    return inside & valid[np.ix_(np.maximum(rows.nearest, 0), np.maximum(cols.nearest, 0))]
+    held = valid[np.ix_(np.maximum(rows.nearest, 0), np.maximum(cols.nearest, 0))]
+    return np.asarray(inside & held)
 
 
 def _product(
