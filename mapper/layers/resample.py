@@ -51,7 +51,7 @@ def resample(
         )
         weight = np.where(touched == 0.0, total, part)
     if method == "bilinear":
-        _, good = _picked(rows, cols, values, valid)
+        good = _held(rows, cols, valid)
     else:
         good = weight >= LEAST_COVER
     out = np.full(weight.shape, np.nan)
@@ -86,9 +86,17 @@ def class_shares(
 
 
 def _picked(rows: AxisPlan, cols: AxisPlan, values: Floats, valid: Bools) -> tuple[Floats, Bools]:
-    inside = (rows.nearest >= 0)[:, None] & (cols.nearest >= 0)[None, :]
     index = np.ix_(np.maximum(rows.nearest, 0), np.maximum(cols.nearest, 0))
-    return values[index], valid[index] & inside
+    return values[index], _held(rows, cols, valid)
+
+
+def _held(rows: AxisPlan, cols: AxisPlan, valid: Bools) -> Bools:
+    """Whether the source cell that holds each target's centre is there and valid."""
+    inside = (rows.nearest >= 0)[:, None] & (cols.nearest >= 0)[None, :]
+    if valid.all():
+        return inside
+    held = valid[np.ix_(np.maximum(rows.nearest, 0), np.maximum(cols.nearest, 0))]
+    return np.asarray(inside & held)
 
 
 def _product(

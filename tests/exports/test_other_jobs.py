@@ -92,6 +92,15 @@ def test_only_what_is_asked_for_is_written(tmp_path: Path) -> None:
 _MAPS = ("consumption", "drawdown", "flags")
 
 
+def test_maps_of_the_interval_are_layers_of_the_page(tmp_path: Path) -> None:
+    more = "[uncertainty]\ndraws = 50\nseed = 1\nmaps = true\n"
+    run(load_job(_job(tmp_path, 500.0, more)), out=tmp_path / "out")
+    text = (tmp_path / "out" / "report.html").read_text(encoding="utf-8")
+    for name in ("drawdown_p05", "drawdown_p95"):
+        assert f'data-layer="{name}"' in text
+        assert f"maps/{name}.tif" in _names(tmp_path / "out")
+
+
 def test_nothing_of_an_earlier_run_passes_for_this_one(tmp_path: Path) -> None:
     out = tmp_path / "out"
     run(load_job(_job(tmp_path, 500.0)), out=out)
