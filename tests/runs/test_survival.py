@@ -10,6 +10,7 @@ import time
 import pytest
 import rasterio
 
+from mapper import pipeline
 from mapper.cli import main
 from mapper.errors import RunFolderError
 from tests.runs.worlds import (
@@ -23,16 +24,24 @@ from tests.runs.worlds import (
 )
 
 KILLS = 20
+BLOCK = (64, 64)
 STAGES = ("start", "blocks", "maps", "tables", "record")
 PROCESSES = multiprocessing.get_context("forkserver")
 PROCESSES.set_forkserver_preload(["mapper.pipeline", "mapper.planning"])
 
 
+@pytest.fixture(autouse=True, scope="module")
+def _small_blocks():
+    with pytest.MonkeyPatch.context() as patch:
+        patch.setattr(pipeline, "block_shape", lambda *_: BLOCK)
+        yield
+
+
 @pytest.fixture(scope="module")
-def undisturbed(tmp_path_factory):
+def undisturbed(_small_blocks, tmp_path_factory):
     """The job, and the folder of a run that nothing disturbed."""
     folder = tmp_path_factory.mktemp("survival")
-    job = make_world(folder / "world")
+    job = make_world(folder / "world", side=64)
     code, out, errors = quiet_main("run", job, "--out", folder / "whole", "--memory", SMALL_BLOCKS)
     assert code == 0, errors
     assert "finished blocks" not in out
@@ -48,6 +57,7 @@ def start(job, out):
 
 
 def _silent_main(arguments):
+    pipeline.block_shape = lambda *_: BLOCK
     nowhere = os.open(os.devnull, os.O_WRONLY)
     os.dup2(nowhere, 1)
     os.dup2(nowhere, 2)
@@ -133,13 +143,13 @@ def _end_well(job, out, whole):
 
 
 def test_a_tile_that_lacks_its_end_in_the_last_block_is_named_with_file_and_offset(tmp_path):
-    job = make_world(tmp_path)
+    job = make_world(tmp_path, side=64)
     path = tmp_path / "temperature.tif"
     size = path.stat().st_size
     os.truncate(path, size - 40)
     code, _, errors = quiet_main("run", job, "--memory", SMALL_BLOCKS)
     assert code == 2
-    assert "the file is cut short: block 5,6 (rows 640..768) needs bytes" in errors
+    assert "the file is cut short: block 5,6 (rows 320..384) needs bytes" in errors
     assert f"..{size}, and the file ends at {size - 40}" in errors
     assert "temperature.tif" in errors
     assert not (tmp_path / "out").exists()
@@ -147,7 +157,7 @@ def test_a_tile_that_lacks_its_end_in_the_last_block_is_named_with_file_and_offs
 
 def test_a_tile_damaged_in_the_last_block_is_named_and_the_blocks_before_it_are_kept(tmp_path):
     """The damage lies inside the file, so that it shows only when the last block is read."""
-    job = make_world(tmp_path)
+    job = make_world(tmp_path, side=64)
     path = tmp_path / "temperature.tif"
     good = path.read_bytes()
     with rasterio.open(path) as file:
@@ -170,12 +180,12 @@ def test_a_tile_damaged_in_the_last_block_is_named_and_the_blocks_before_it_are_
 
 @pytest.fixture
 def small_disk(tmp_path):
-    """A disk of 12 MB: blocks and maps do not fit."""
+    """A disk of 2 MB: blocks and maps do not fit."""
     folder = tmp_path / "disk"
     folder.mkdir()
     mount = shutil.which("mount")
     done = mount and subprocess.run(
-        [mount, "-t", "tmpfs", "-o", "size=12m", "tmpfs", str(folder)],
+        [mount, "-t", "tmpfs", "-o", "size=2m", "tmpfs", str(folder)],
         capture_output=True, check=False,
     )  # fmt: skip
     if not done or done.returncode:

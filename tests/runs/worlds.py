@@ -34,9 +34,9 @@ by = "drawdown_t_per_km2_yr"
 """
 
 
-def make_world(folder: Path) -> Path:
-    """Write the inputs and the job; returns the job's path."""
-    job = write_inputs(folder, N_ROWS, N_COLS, tile=128)
+def make_world(folder: Path, side: int = 128) -> Path:
+    """Write the inputs, 6 x 7 blocks of ``side`` squared, and the job; returns the job's path."""
+    job = write_inputs(folder, 6 * side, 7 * side, tile=side)
     job.write_text(job.read_text(encoding="utf-8") + DOUBTS, encoding="utf-8")
     return job
 
