@@ -305,16 +305,23 @@ def _write_maps(
         for kind in todo.maps
     ]
     with _Watch("maps", 0, total, progress):
-        dask.compute(*tasks, scheduler="threads", num_workers=threads)
+        ends = dask.compute(*tasks, scheduler="threads", num_workers=threads)
+    for end in ends:
+        if isinstance(end, Exception):
+            raise end
 
 
 def _write_one_map(
     folder: Path, kind: MapKind, grid: Grid, windows: list[Window], journal: Journal
-) -> int:
+) -> int | Exception:
+    """Write a map; an error is handed back, so that the other maps end and clear up too."""
     pieces = (
         (window, journal.load(index, f"map_{kind.name}")) for index, window in enumerate(windows)
     )
-    return write_map(folder / "maps", kind, grid, pieces, threads=2)
+    try:
+        return write_map(folder / "maps", kind, grid, pieces, threads=2)
+    except Exception as end:  # noqa: BLE001 - raised by who called
+        return end
 
 
 def _write_laws(laws: tuple[LawTotals, ...], names: tuple[str, ...], folder: Path) -> None:
