@@ -37,12 +37,12 @@ def connected(address: str, processes: int) -> Iterator[Any]:
                 dashboard_address=None,
                 silence_logs=logging.CRITICAL,
             ) as cluster,
-            Client(cluster) as client,
+            Client(cluster, set_as_default=False) as client,
         ):
             yield client
         return
     try:
-        client = Client(address, timeout=CONNECT_SECONDS)
+        client = Client(address, timeout=CONNECT_SECONDS, set_as_default=False)
     except (OSError, ValueError) as cause:
         raise JobError(
             f"no scheduler answers at {address!r}",
@@ -74,7 +74,9 @@ def finished(futures: Sequence[Any]) -> Iterator[Any]:
     """
     from distributed import KilledWorker, as_completed  # noqa: PLC0415
 
-    for future in as_completed(futures):
+    if not futures:
+        return
+    for future in as_completed(futures, loop=futures[0].client.loop):
         try:
             yield future.result()
         except KilledWorker as cause:

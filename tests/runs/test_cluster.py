@@ -90,7 +90,7 @@ def test_a_worker_killed_on_the_way_does_not_show_and_progress_is_told(one_threa
         LocalCluster(
             n_workers=2, threads_per_worker=1, dashboard_address=None, silence_logs=50
         ) as there,
-        Client(there) as client,
+        Client(there, set_as_default=False) as client,
     ):
         pids = client.run(os.getpid)
         killer = threading.Thread(target=kill_one, args=(next(iter(pids.values())),))

@@ -72,11 +72,12 @@ def test_a_job_without_regions_has_intervals_and_an_empty_ranking(tmp_path):
 
 def test_a_grid_without_a_result_has_totals_of_zero_without_spread(tmp_path):
     job = load_job(ISLAND)
-    left, top = make_plan(job).grid.left, make_plan(job).grid.top
-    sea = replace(job.grid, bounds=(left, top - 0.05, left + 0.05, top))
+    grid = make_plan(job).grid
+    left, top = grid.left + 273 * grid.dx, grid.top - 265 * grid.dy  # in the gap of the runoff
+    gap = replace(job.grid, bounds=(left, top - 6 * grid.dy, left + 6 * grid.dx, top))
     draws = replace(job.uncertainty, draws=50)
     run(
-        replace(job, grid=sea, regions=None, ranking=None, uncertainty=draws, write=()),
+        replace(job, grid=gap, regions=None, ranking=None, uncertainty=draws, write=()),
         out=tmp_path,
     )
     table = pd.read_csv(tmp_path / "tables/regions.csv")
