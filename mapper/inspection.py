@@ -68,7 +68,7 @@ class Inspection:
         return lines
 
 
-SECONDS_PER_MILLION_CELLS = 0.6  # on one processor, measured on the island; a rough guide only
+SECONDS_PER_MILLION_CELLS = 0.8  # of processor, on 144 million cells with draws; a rough guide
 
 
 def inspect(job: Job) -> Inspection:

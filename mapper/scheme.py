@@ -357,8 +357,3 @@ def _check_range(parameter: Parameter, value: float, job: Job) -> None:
         where=f"{job.path}, law.parameters.{parameter.name}",
         fix=f"a value in that range ({parameter.meaning})",
     )
-
-
-def with_values(one: RockLaw, values: Mapping[str, float]) -> RockLaw:
-    """The same law with some numbers replaced, for a draw."""
-    return replace(one, values={**one.values, **values})
