@@ -43,9 +43,7 @@ SMALLEST_SIDE = 128
 DEFAULT_MEMORY = 2e9
 
 
-BASE_MEMORY = (
-    6e8  # the libraries, GDAL's cache and the assembly of maps: a bound that runs stayed under
-)
+BASE_MEMORY = 6e8  # the libraries, GDAL's cache and maps: a bound that runs kept to
 
 
 BYTES_PER_CELL = 400.0  # arrays alive at once while a block is evaluated: a bound, likewise

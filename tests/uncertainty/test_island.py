@@ -14,13 +14,18 @@ from mapper.grid import Window
 from mapper.job import load_job
 from mapper.pipeline import Engine, run
 from mapper.planning import make_plan
-from mapper.scheme import Scheme, with_values
+from mapper.scheme import Scheme
 from mapper.states import to_states
 from mapper.sums import totals, unit_exponent
 from mapper.uncertainty.propagate import propagate, shifted
 from mapper.uncertainty.spread import MOST_APART, make_draws
 
 TABLES = ("regions", "regions_by_rock", "ranking", "sensitivity")
+
+
+def with_values(one, values):
+    """The same law with some numbers replaced, for a draw."""
+    return replace(one, values={**one.values, **values})
 
 
 @pytest.fixture(scope="module")
